@@ -1,0 +1,1 @@
+"""Links to instruments and the adapters that speak through them; knows nothing of scans."""
