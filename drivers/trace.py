@@ -40,4 +40,4 @@ class Trace:
 
     def volts(self) -> NDArray[np.float64]:
         """Shape (n,), volts."""
-        return self.counts * self.scaling.volts_per_count + self.scaling.volts_at_zero
+        return self.counts.astype(np.float64) * self.scaling.volts_per_count + self.scaling.volts_at_zero

@@ -69,9 +69,7 @@ class AxisTable(Model):
     x: LinearAxis | None = None
     y: LinearAxis | None = None
     z: LinearAxis | None = None
-    theta: RotaryAxis | None = Field(
-        default=None, description="rotation about an axis nominally parallel to y"
-    )
+    theta: RotaryAxis | None = Field(default=None, description="rotation about an axis nominally parallel to y")
     phi: RotaryAxis | None = Field(default=None, description="roll of the sensor about its own axis")
 
     def present(self) -> tuple[Axis, ...]:

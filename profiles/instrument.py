@@ -110,9 +110,7 @@ class Instrument(Profile):
         default=None, description="stage only: the letter or number by which the controller names each axis"
     )
     settle_ms: NonNegative = Field(default=0.0, description="stage only: time it needs to come to rest")
-    still_tolerance_um: Positive = Field(
-        default=2.0, description="stage only: two reports this close are 'still'"
-    )
+    still_tolerance_um: Positive = Field(default=2.0, description="stage only: two reports this close are 'still'")
     still_tolerance_mdeg: Positive = 2.0
 
     @model_validator(mode="after")

@@ -40,9 +40,7 @@ class Rotation(Model):
         default=None, description="full span, centred on zero"
     )
     step_deg: Annotated[float, Field(gt=0, le=90)] | None = None
-    angles_deg: Annotated[tuple[Annotated[float, Field(ge=-90, le=90)], ...], Field(min_length=3)] | None = (
-        None
-    )
+    angles_deg: Annotated[tuple[Annotated[float, Field(ge=-90, le=90)], ...], Field(min_length=3)] | None = None
     highest_mhz: Positive | None = Field(
         default=None, description="choose the step so that this frequency is resolved"
     )
