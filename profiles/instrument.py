@@ -21,7 +21,7 @@ Family = Literal["preamble", "curve", "burst", "iso-words", "axis-prefix", "quer
 ACTIONS: dict[Role, dict[Family, dict[str, tuple[str, ...]]]] = {
     "oscilloscope": {
         "preamble": {
-            "vertical_full_scale": ("channel", "volts"),
+            "vertical_full_scale": ("channel", "volts", "per_division"),
             "vertical_offset": ("channel", "volts"),
             "sample_rate": ("hertz",),
             "record_points": ("points",),
@@ -36,7 +36,7 @@ ACTIONS: dict[Role, dict[Family, dict[str, tuple[str, ...]]]] = {
             "averages_taken": (),
         },
         "curve": {
-            "vertical_full_scale": ("channel", "volts"),
+            "vertical_full_scale": ("channel", "volts", "per_division"),
             "vertical_offset": ("channel", "volts"),
             "sample_rate": ("hertz",),
             "record_points": ("points",),
@@ -83,6 +83,7 @@ class ScopeLimits(Model):
     sample_rates_mhz: Annotated[tuple[Positive, ...], Field(min_length=1)]
     max_points: Annotated[int, Field(ge=16)]
     max_averages: Annotated[int, Field(ge=1)]
+    divisions: Annotated[int, Field(ge=1)] = Field(default=8, description="full scale over volts per division")
 
 
 class Transfer(Model):
@@ -90,6 +91,7 @@ class Transfer(Model):
 
     bits: Literal[8, 16]
     byte_order: Literal["msb_first", "lsb_first"]
+    signed: bool = True
 
 
 class Instrument(Profile):
