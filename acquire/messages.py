@@ -22,7 +22,7 @@ class Message(msgspec.Struct, frozen=True, tag_field="type", kw_only=True):
 # --- requests ---------------------------------------------------------------------------------------------
 
 
-class RunScan(Message, tag="run"):
+class RunScan(Message, frozen=True, kw_only=True, tag="run"):
     """Start a scan. The profiles travel resolved, as mappings, so that both sides see the same ones."""
 
     scan: dict[str, Any]
@@ -32,29 +32,29 @@ class RunScan(Message, tag="run"):
     continue_store: bool = False
 
 
-class Hold(Message, tag="hold"):
+class Hold(Message, frozen=True, kw_only=True, tag="hold"):
     """Wait after the point in hand; the source is switched off while waiting."""
 
 
-class Resume(Message, tag="resume"):
+class Resume(Message, frozen=True, kw_only=True, tag="resume"):
     """Go on after a hold."""
 
 
-class Stop(Message, tag="stop"):
+class Stop(Message, frozen=True, kw_only=True, tag="stop"):
     """Break the scan off; what was stored stays."""
 
 
-class GetStatus(Message, tag="status"):
+class GetStatus(Message, frozen=True, kw_only=True, tag="status"):
     """Ask how things stand."""
 
 
-class GetEvents(Message, tag="events"):
+class GetEvents(Message, frozen=True, kw_only=True, tag="events"):
     """Ask for past events from number `since` on."""
 
     since: int
 
 
-class Shutdown(Message, tag="shutdown"):
+class Shutdown(Message, frozen=True, kw_only=True, tag="shutdown"):
     """Leave the bench safe and end the daemon."""
 
 
@@ -71,7 +71,7 @@ class RequestEnvelope(msgspec.Struct, frozen=True, kw_only=True):
 # --- events -----------------------------------------------------------------------------------------------
 
 
-class ScanStarted(Message, tag="scan-started"):
+class ScanStarted(Message, frozen=True, kw_only=True, tag="scan-started"):
     """A scan begins: what a live view needs to draw it."""
 
     name: str
@@ -84,21 +84,21 @@ class ScanStarted(Message, tag="scan-started"):
     source: str
 
 
-class StateChanged(Message, tag="state"):
+class StateChanged(Message, frozen=True, kw_only=True, tag="state"):
     """The scan changed state; `reason` says why in one line."""
 
     state: ScanState
     reason: str = ""
 
 
-class PointsStored(Message, tag="stored"):
+class PointsStored(Message, frozen=True, kw_only=True, tag="stored"):
     """Points up to and including `last` are durable on disk."""
 
     last: int
     count: int
 
 
-class PointSeen(Message, tag="point"):
+class PointSeen(Message, frozen=True, kw_only=True, tag="point"):
     """A point was reduced: the numbers a live view shows."""
 
     index: int
@@ -114,7 +114,7 @@ class PointSeen(Message, tag="point"):
     range_use: float
 
 
-class WaveformSeen(Message, tag="waveform"):
+class WaveformSeen(Message, frozen=True, kw_only=True, tag="waveform"):
     """A thinned picture of the latest waveform and spectrum (about 400 values each); sent now and then."""
 
     index: int
@@ -126,7 +126,7 @@ class WaveformSeen(Message, tag="waveform"):
     spectrum_db: list[float]
 
 
-class FindingChanged(Message, tag="finding"):
+class FindingChanged(Message, frozen=True, kw_only=True, tag="finding"):
     """A finding was raised, updated or cleared. `finding` is `checks.finding.Finding` as a mapping."""
 
     action: Literal["raised", "updated", "cleared"]
@@ -134,7 +134,7 @@ class FindingChanged(Message, tag="finding"):
     finding: dict[str, Any]
 
 
-class Progress(Message, tag="progress"):
+class Progress(Message, frozen=True, kw_only=True, tag="progress"):
     """How far the scan is and how long it will still take."""
 
     done: int
@@ -143,7 +143,7 @@ class Progress(Message, tag="progress"):
     left_s: float
 
 
-class Notice(Message, tag="notice"):
+class Notice(Message, frozen=True, kw_only=True, tag="notice"):
     """One line for the operator: what the daemon does beside the points (autorange, homing, cautions)."""
 
     text: str
@@ -163,19 +163,19 @@ class EventEnvelope(msgspec.Struct, frozen=True, kw_only=True):
 # --- replies ----------------------------------------------------------------------------------------------
 
 
-class Done(Message, tag="done"):
+class Done(Message, frozen=True, kw_only=True, tag="done"):
     """The request was carried out or accepted."""
 
     text: str = ""
 
 
-class Refused(Message, tag="refused"):
+class Refused(Message, frozen=True, kw_only=True, tag="refused"):
     """It was not; `text` is one line with the cure."""
 
     text: str
 
 
-class Status(Message, tag="status-reply"):
+class Status(Message, frozen=True, kw_only=True, tag="status-reply"):
     """How things stand."""
 
     bench: str
@@ -189,7 +189,7 @@ class Status(Message, tag="status-reply"):
     identities: dict[str, str]
 
 
-class Events(Message, tag="events-reply"):
+class Events(Message, frozen=True, kw_only=True, tag="events-reply"):
     """Past events; `oldest` is the first number still kept."""
 
     oldest: int
