@@ -1,0 +1,1 @@
+"""The live view: events in, a picture on the terminal out; or plain lines where there is no terminal."""
