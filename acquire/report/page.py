@@ -40,7 +40,8 @@ def picture(p: Picture) -> str:
     """An embedded figure with its caption, which also stands in for it where it cannot be seen."""
     data = b64encode(p.png).decode("ascii")
     caption = escape(p.caption)
-    return f'<figure><img alt="{caption}" src="data:image/png;base64,{data}"><figcaption>{caption}</figcaption></figure>'
+    image = f'<img alt="{caption}" src="data:image/png;base64,{data}">'
+    return f"<figure>{image}<figcaption>{caption}</figcaption></figure>"
 
 
 def table(head: Sequence[str], rows: Sequence[Sequence[str]]) -> str:
@@ -63,14 +64,16 @@ def findings(entries: Sequence[Mapping[str, str]]) -> str:
     if not entries:
         return "<p>None of the checks found anything.</p>"
     order = {"halt": 0, "caution": 1, "note": 2}
-    parts = []
-    for f in sorted(entries, key=lambda f: (order[f["severity"]], f["code"])):
-        parts.append(
-            f'<div class="finding {escape(f["severity"])}"><p><b>{escape(f["severity"])}: {escape(f["code"])}</b>, '
-            f"{escape(f['summary'])}</p><p>Consequence: {escape(f['consequence'])}</p>"
-            f"<p>Remedy: {escape(f['remedy'])}</p></div>"
-        )
-    return "".join(parts)
+    worst_first = sorted(entries, key=lambda f: (order[f["severity"]], f["code"]))
+    return "".join(finding({k: escape(str(v)) for k, v in f.items()}) for f in worst_first)
+
+
+def finding(f: Mapping[str, str]) -> str:
+    """One finding, its texts already escaped."""
+    return (
+        f'<div class="finding {f["severity"]}"><p><b>{f["severity"]}: {f["code"]}</b>, {f["summary"]}</p>'
+        f"<p>Consequence: {f['consequence']}</p><p>Remedy: {f['remedy']}</p></div>"
+    )
 
 
 def section(title: str, *parts: str) -> str:
