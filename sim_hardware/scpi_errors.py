@@ -28,6 +28,7 @@ TEXTS: dict[int, str] = {
     -171: "Invalid expression",
     -178: "Expression data not allowed",
     -200: "Execution error",
+    -213: "Init ignored",
     -221: "Settings conflict",
     -222: "Data out of range",
     -224: "Illegal parameter value",
