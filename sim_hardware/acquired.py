@@ -72,11 +72,30 @@ class Acquired(Protocol):
     uses as its reference point in what it tells of its scaling.
     """
 
-    points: int
-    averages: int
-    interval_s: float
-    start_s: float
-    x_reference: int
+    @property
+    def points(self) -> int:
+        """Samples."""
+        ...
+
+    @property
+    def averages(self) -> int:
+        """Triggers averaged."""
+        ...
+
+    @property
+    def interval_s(self) -> float:
+        """Between samples."""
+        ...
+
+    @property
+    def start_s(self) -> float:
+        """Of the first sample after the trigger."""
+        ...
+
+    @property
+    def x_reference(self) -> int:
+        """The sample used as reference point."""
+        ...
 
     def codes(self, channel: int, bits: int) -> Codes:
         """Signed codes; raises `ScpiError` when this capture cannot be given so."""
@@ -100,6 +119,10 @@ class CaptureSource(Protocol):
 
     def arm(self) -> None:
         """A capture is about to be taken; raises `ScpiError` when none can be."""
+        ...
+
+    def foresee(self, shot: Shot) -> bool:
+        """Work ahead on a capture whose triggers are expected; False when nothing is left to do."""
         ...
 
     def take(self, shot: Shot) -> Acquired:
@@ -176,12 +199,26 @@ class LiveSource:
 
     def __init__(self, tank: Tank, motion: Motion, drive: Callable[[], DriveState], sensor_channel: int) -> None:
         self._tank, self._motion, self._drive, self._channel = tank, motion, drive, sensor_channel
+        self._foreseen: LiveCapture | None = None
 
     def arm(self) -> None:
         """Always possible."""
 
+    def foresee(self, shot: Shot) -> bool:
+        """Compute the capture that is under way, if nothing changes before it ends."""
+        if self._foreseen is not None and self._foreseen.request.number == shot.number:
+            return False
+        self._foreseen = self._capture(shot)
+        return self._foreseen.prepare()
+
     def take(self, shot: Shot) -> LiveCapture:
-        """One place when the carriage was still, else several that count equally."""
+        """What was foreseen, or, when the stage or the drive did something else, computed anew."""
+        capture = self._capture(shot)
+        foreseen, self._foreseen = self._foreseen, None
+        return foreseen if foreseen is not None and foreseen.request == capture.request else capture
+
+    def _capture(self, shot: Shot) -> LiveCapture:
+        """At one place when the carriage was still, else at several that count equally."""
         times = shot.trigger_times(CARRIAGES)
         if self._motion.still_between(times[0], times[-1]):
             times = times[:1]

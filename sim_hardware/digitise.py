@@ -24,10 +24,10 @@ def on_the_wire(codes: Codes, *, msb_first: bool, unsigned: bool) -> memoryview:
     """Bytes of the codes; unsigned codes are counted from the lower rail."""
     if codes.dtype.itemsize == 1:
         single: NDArray[np.uint8] = codes.view(np.uint8)
-        return memoryview(single ^ np.uint8(0x80) if unsigned else single)
+        return (single ^ np.uint8(0x80) if unsigned else single).data
     double: NDArray[np.uint16] = codes.view(np.uint16)
     if unsigned:
         double = double ^ np.uint16(0x8000)
     # no copy when the machine's own order is the one wanted
     ordered = np.ascontiguousarray(double, dtype=">u2" if msb_first else "<u2")
-    return memoryview(ordered.view(np.uint8))
+    return ordered.view(np.uint8).data

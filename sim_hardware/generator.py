@@ -19,7 +19,7 @@ PERIOD = Real(1e-6, 100.0, "S")
 
 
 class BurstGenerator(ScpiInstrument):
-    """Drives the source while the output is on. Without burst mode it gives nothing: it has no continuous output."""
+    """Drives the source while output and burst mode are on; it has no continuous output."""
 
     def __init__(
         self, timeline: Timeline, sync: SyncLine, identity: str = "QUIET BASIN,GENERATOR,0001,1.0"

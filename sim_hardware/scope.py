@@ -124,7 +124,9 @@ class Scope(ScpiInstrument):
 
     def prepare(self) -> bool:
         """Work ahead of the transfer; False when nothing is left to do."""
-        return self._memory is not None and self._memory.prepare()
+        if self._memory is not None:
+            return self._memory.prepare()
+        return self._shot is not None and self._due is not None and self._source.foresee(self._shot)
 
     def _expect_triggers(self) -> None:
         shot, period = self._shot, self._sync.period_s

@@ -146,8 +146,6 @@ class IsoStage:
             words = words_of(text)
             if not words:
                 return OK
-            if self._alarm:
-                raise Refused(LOCKED)
             return self._words(words)
         except Refused as refused:
             return b"error:%d\n" % refused.number
@@ -170,6 +168,8 @@ class IsoStage:
         return not self._homing
 
     def _words(self, words: dict[str, list[float]]) -> bytes | Later:
+        if self._alarm:
+            raise Refused(LOCKED)
         dwell = self._modes(words.pop("G", []), "P" in words)
         feed = words.pop("F", None)
         if feed is not None:

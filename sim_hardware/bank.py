@@ -1,0 +1,258 @@
+"""A bank of stored captures, served in place of the tank: what was measured at a pose is answered there."""
+
+from __future__ import annotations
+
+import zipfile
+from collections import deque
+from collections.abc import Mapping
+from dataclasses import dataclass, fields
+from pathlib import Path
+
+import numpy as np
+from numpy.typing import NDArray
+
+from profiles.model import AXES, LINEAR_AXES, Axis
+from profiles.units import DEG, MM
+from sim_hardware.acquired import Shot
+from sim_hardware.digitise import Codes
+from sim_hardware.motion import AxisLimits, Motion
+from sim_hardware.scpi_errors import ScpiError
+
+Floats = NDArray[np.float64]
+STEP = np.array([(MM if a in LINEAR_AXES else DEG) * 1e-4 for a in AXES])  # last decimal of a stage's words
+
+
+class BankError(ValueError):
+    """The bank file cannot be used; the message is one line."""
+
+
+@dataclass(frozen=True)
+class Bank:
+    """Stored points in the order in which they were measured; n points of N samples.
+
+    Attributes:
+        carriage: (n, 5) targets of the stage, m and rad; reported_before, reported_after: (n, 5) its reports.
+        counts: (n, N), int8 or int16.
+        volts_per_count, volts_at_zero, interval_s, start_s, full_scale_v, temperature_c: (n,).
+        averages: (n,), whole numbers.
+        lowest, highest: the counts at the rails.
+        strict: answer only what was measured; otherwise captures are served in turn whatever the pose.
+    """
+
+    carriage: Floats
+    reported_before: Floats
+    reported_after: Floats
+    counts: Codes
+    volts_per_count: Floats
+    volts_at_zero: Floats
+    interval_s: Floats
+    start_s: Floats
+    full_scale_v: Floats
+    averages: NDArray[np.int64]
+    lowest: NDArray[np.int64]
+    highest: NDArray[np.int64]
+    temperature_c: Floats
+    strict: NDArray[np.bool_]
+
+    def __len__(self) -> int:
+        return int(self.counts.shape[0])
+
+    @classmethod
+    def read(cls, path: Path) -> Bank:
+        """Raises BankError: no such file, no such arrays, or shapes that do not fit each other."""
+        try:
+            with np.load(path, allow_pickle=False) as stored:
+                arrays = {f.name: stored[f.name] for f in fields(cls) if f.name in stored}
+        except (OSError, ValueError, zipfile.BadZipFile, EOFError) as exc:
+            raise BankError(f"{path}: cannot be read as a bank: {exc}") from exc
+        missing = [f.name for f in fields(cls) if f.name not in arrays]
+        if missing:
+            raise BankError(f"{path}: not in the bank: {', '.join(missing)}")
+        counts = arrays["counts"]
+        if counts.ndim != 2 or 0 in counts.shape or counts.dtype.newbyteorder("=") not in (np.int8, np.int16):
+            raise BankError(f"{path}: counts must be int8 or int16 of shape (points, samples), none of them 0")
+        n = counts.shape[0]
+        shapes = {
+            **dict.fromkeys(("carriage", "reported_before", "reported_after"), (n, 5)),
+            **dict.fromkeys(("lowest", "highest", "strict"), ()),
+        }
+        problems = [
+            f"{name} has shape {array.shape}, not {shapes.get(name, (n,))}"
+            for name, array in arrays.items()
+            if name != "counts" and array.shape != shapes.get(name, (n,))
+        ]
+        if problems:
+            raise BankError(f"{path}: {'; '.join(problems)}")
+        arrays["counts"] = np.ascontiguousarray(counts, dtype=counts.dtype.newbyteorder("="))
+        return cls(**arrays)
+
+
+class Replay:
+    """What of a bank has been served, and what comes next."""
+
+    def __init__(self, bank: Bank) -> None:
+        self.bank = bank
+        self.strict = bool(bank.strict)
+        self._left: dict[tuple[int, ...], deque[int]] = {}
+        for index, pose in enumerate(bank.carriage):
+            self._left.setdefault(self._key(pose), deque()).append(index)
+        self._served = 0
+        self._pose: tuple[int, ...] | None = None
+        self._shown: int | None = None  # the point whose reports and temperature are answered now
+        self._captured = False
+
+    @staticmethod
+    def _key(pose: Floats) -> tuple[int, ...]:
+        return tuple(int(v) for v in np.rint(pose / STEP))
+
+    def _find(self, pose: Floats) -> tuple[int, ...] | None:
+        key = self._key(pose)
+        if key in self._left:
+            return key
+        # a value half-way between two decimals may have been rounded the other way
+        off = np.abs(self.bank.carriage - pose).max(axis=1, where=np.ones(5, bool), initial=0.0)
+        near = int(off.argmin())
+        if np.all(np.abs(self.bank.carriage[near] - pose) <= 1.01 * STEP):
+            return self._key(self.bank.carriage[near])
+        return None
+
+    def knows(self, pose: Floats) -> bool:
+        """Something measured at this pose is left to be served."""
+        key = self._find(pose)
+        return key is not None and bool(self._left[key])
+
+    def go(self, pose: Floats) -> None:
+        """The stage is told to go there."""
+        self._pose = self._find(pose)
+        left = self._left.get(self._pose) if self._pose is not None else None
+        self._shown, self._captured = (left[0] if left else None), False
+
+    def reported(self) -> Floats | None:
+        """What the stage reported there: before the capture, or, once it is taken, after it."""
+        if not self.strict or self._shown is None:
+            return None
+        bank = self.bank
+        stored: Floats = (bank.reported_after if self._captured else bank.reported_before)[self._shown]
+        return stored
+
+    def temperature_c(self) -> float:
+        """Of the point at which the stage stands; before the first move, of the first point."""
+        if self.strict:
+            return float(self.bank.temperature_c[self._shown or 0])
+        return float(self.bank.temperature_c[self._served % len(self.bank)])
+
+    def ready(self) -> bool:
+        """A capture can be served here."""
+        return not self.strict or (self._pose is not None and bool(self._left[self._pose]))
+
+    def serve(self) -> int:
+        """The point whose counts are served, taken off the bank when strict."""
+        if not self.strict:
+            index = self._served % len(self.bank)
+        else:
+            assert self._pose is not None
+            index = self._left[self._pose].popleft()
+            self._shown, self._captured = index, True
+        self._served += 1
+        return index
+
+
+@dataclass(frozen=True)
+class BankCapture:
+    """A stored capture. Reference points are zero, so that the scaling arrives bit for bit."""
+
+    bank: Bank
+    index: int
+    x_reference: int = 0
+
+    @property
+    def points(self) -> int:
+        """Samples."""
+        return int(self.bank.counts.shape[1])
+
+    @property
+    def averages(self) -> int:
+        """Triggers averaged."""
+        return int(self.bank.averages[self.index])
+
+    @property
+    def interval_s(self) -> float:
+        """Between samples."""
+        return float(self.bank.interval_s[self.index])
+
+    @property
+    def start_s(self) -> float:
+        """Of the first sample after the trigger."""
+        return float(self.bank.start_s[self.index])
+
+    def y_reference(self, bits: int) -> int:  # noqa: ARG002 - the same for all
+        """Zero."""
+        return 0
+
+    def scale(self, channel: int, bits: int) -> tuple[float, float]:  # noqa: ARG002
+        """As stored."""
+        return float(self.bank.volts_per_count[self.index]), float(self.bank.volts_at_zero[self.index])
+
+    def codes(self, channel: int, bits: int) -> Codes:  # noqa: ARG002
+        """As stored, widened if need be; raises -221 when the samples asked for are too narrow."""
+        counts: Codes = self.bank.counts[self.index]
+        if bits < 8 * counts.dtype.itemsize:
+            raise ScpiError(-221, "the bank holds 16-bit samples")
+        return counts if bits == 8 * counts.dtype.itemsize else counts.astype(np.int16)
+
+    def prepare(self) -> bool:
+        """Nothing to do."""
+        return False
+
+
+class BankSource:
+    """Captures of a bank."""
+
+    def __init__(self, replay: Replay) -> None:
+        self._replay = replay
+
+    def arm(self) -> None:
+        """Raises -300 when nothing measured at this pose is left."""
+        if not self._replay.ready():
+            raise ScpiError(-300, "no stored capture left for this pose")
+
+    def foresee(self, shot: Shot) -> bool:  # noqa: ARG002
+        """Nothing to do."""
+        return False
+
+    def take(self, shot: Shot) -> BankCapture:  # noqa: ARG002
+        """The next one."""
+        return BankCapture(self._replay.bank, self._replay.serve())
+
+
+class BankMotion(Motion):
+    """A stage that, when the bank is strict, goes only where something is left to be served."""
+
+    replay: Replay
+
+    def may_go(self, targets: Mapping[Axis, float]) -> bool:
+        """Within travel, and in the bank."""
+        return super().may_go(targets) and (not self.replay.strict or self.replay.knows(self._pose(targets)))
+
+    def go_together(self, targets: Mapping[Axis, float], feed: float | None) -> None:
+        """Also tell the bank."""
+        pose = self._pose(targets)
+        super().go_together(targets, feed)
+        self.replay.go(pose)
+
+    def go_each(self, targets: Mapping[Axis, float], limits: Mapping[Axis, AxisLimits]) -> None:
+        """Also tell the bank."""
+        pose = self._pose(targets)
+        super().go_each(targets, limits)
+        self.replay.go(pose)
+
+    def reported(self) -> dict[Axis, float]:
+        """As it was reported then, once the stage has arrived."""
+        stored = None if self.moving() else self.replay.reported()
+        if stored is None:
+            return super().reported()
+        return {a: float(v) for a, v in zip(AXES, stored, strict=True) if a in self.limits}
+
+    def _pose(self, targets: Mapping[Axis, float]) -> Floats:
+        """All five coordinates; axes not named stay where they are told to be."""
+        return np.array([targets[a] if a in targets else self.target(a) for a in AXES])
