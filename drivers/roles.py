@@ -7,14 +7,13 @@ All units SI: volts, seconds, hertz, metres, radians, degrees Celsius for temper
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Protocol
 
+from drivers.link import StopAsked
 from drivers.trace import Trace
 from profiles.model import Axis
-
-StopAsked = Callable[[], bool]
 
 
 @dataclass(frozen=True)
@@ -118,7 +117,7 @@ class Generator(Instrument, Protocol):
 class Thermometer(Instrument, Protocol):
     """Reads the water temperature; split in two so that a slow instrument does not hold up the scan."""
 
-    def ask(self) -> None:
+    def ask_temperature(self) -> None:
         """Send the question."""
         ...
 

@@ -1,0 +1,58 @@
+"""A serial line, through pyserial."""
+
+from __future__ import annotations
+
+from typing import Any
+
+from drivers.errors import CannotConnect
+from drivers.link import Link
+
+
+class SerialLink(Link):
+    """`serial:///dev/NAME`. Opening some boards restarts them: what they were doing is then unknown."""
+
+    def __init__(
+        self, address: str, timeout_s: float = 2.0, terminator: str = "\n", baud_rate: int = 115_200
+    ) -> None:
+        super().__init__(address, timeout_s, terminator)
+        self._device = address.removeprefix("serial://")
+        self._baud_rate = baud_rate
+        self._port: Any = None
+
+    def _connect(self) -> None:
+        import serial
+
+        try:
+            self._port = serial.Serial(self._device, self._baud_rate, exclusive=True, write_timeout=self.timeout_s)
+        except (OSError, ValueError) as error:  # SerialException is an OSError
+            raise CannotConnect(
+                f"cannot open {self._device} ({error}); is it plugged in, and may this user open it?"
+            ) from error
+        self._port.reset_input_buffer()
+
+    def _disconnect(self) -> None:
+        if self._port is not None:
+            self._port.close()
+            self._port = None
+
+    def _send(self, data: bytes) -> None:
+        if self._port is None:
+            raise self._lost("is not connected")
+        try:
+            self._port.write(data)
+        except OSError as error:
+            raise self._lost(f"sending failed ({error})") from error
+
+    def _receive(self, timeout_s: float) -> bytes:
+        if self._port is None:
+            raise self._lost("is not connected")
+        try:
+            waiting = self._port.in_waiting
+            if not waiting:
+                self._port.timeout = timeout_s
+                first: bytes = self._port.read(1)
+                return first + self._port.read(self._port.in_waiting) if first else b""
+            data: bytes = self._port.read(waiting)
+            return data
+        except (OSError, TypeError) as error:  # a port that vanished raises either
+            raise self._lost(f"the port is gone ({error})") from error
