@@ -80,6 +80,8 @@ class Brake:
 
     def travelled(self, t: float) -> float:
         """Distance covered."""
+        if self.start_speed == 0.0:
+            return 0.0  # whatever the deceleration, infinite included
         t = min(max(t, 0.0), self.duration_s)
         return t * (self.start_speed - 0.5 * self.acceleration * t)
 
