@@ -9,7 +9,7 @@ from numpy.typing import NDArray
 
 from sim_hardware import water
 from sim_hardware.capture import DriveState
-from sim_hardware.field import SourceShape, relative_pressure
+from sim_hardware.field import SourceShape
 from sim_hardware.harmonics import harmonic_amplitudes
 from sim_hardware.truth import SourceTruth
 
@@ -22,8 +22,7 @@ class Burst:
 
     Attributes:
         frequency_hz: of the fundamental.
-        weights: shape (harmonics,), complex, Pa: s(t) = envelope Re sum weights_n exp(j n omega t) is what the
-            face would have to do so that the field at the reference point is the steepened wave.
+        weights: shape (harmonics,), complex, Pa: the burst is envelope times Re sum weights_n exp(j n omega t).
         steady_s: time for which the drive is on.
         rise_s: time of its rise, and of its fall after the drive has ended.
     """
@@ -59,12 +58,9 @@ def make_burst(truth: SourceTruth, drive: DriveState, temperature_c: float) -> B
     """
     pressure = truth.reference_pressure_kpa * 1e3 * drive.amplitude_v / truth.reference_drive_v
     amplitudes = harmonic_amplitudes(shock_parameter(truth, drive, temperature_c), truth.harmonics)
-    shape = source_shape(truth)
-    gains = [_reference_gain(shape, drive.frequency_hz, n, temperature_c) for n in range(1, truth.harmonics + 1)]
-    weights = pressure * amplitudes * np.exp(1j * np.radians(truth.harmonic_phase_deg)) / np.array(gains)
     return Burst(
         frequency_hz=drive.frequency_hz,
-        weights=weights,
+        weights=pressure * amplitudes * np.exp(1j * np.radians(truth.harmonic_phase_deg)),
         steady_s=drive.cycles / drive.frequency_hz,
         rise_s=truth.rise_cycles / drive.frequency_hz,
     )
@@ -98,12 +94,6 @@ def null_factor(truth: SourceTruth, frequencies: Real) -> Real:
         away = (frequencies * 1e-6 - null.frequency_mhz) / null.width_mhz
         factor *= 1 - (1 - 10 ** (-null.depth_db / 20)) * np.exp(-(away**2) / 2)
     return factor
-
-
-def _reference_gain(shape: SourceShape, frequency_hz: float, order: int, temperature_c: float) -> complex:
-    wavenumber = 2 * np.pi * order * frequency_hz / water.sound_speed(temperature_c)
-    place = np.array([shape.reference_m])
-    return complex(relative_pressure(shape, wavenumber, order, np.zeros(1), place)[0])
 
 
 def _flank(t: Real, rise_s: float) -> Real:

@@ -31,7 +31,7 @@ class Patch:
     """The part of the grid that an element needs.
 
     Attributes:
-        real, imaginary: shape (grid points, frequencies), p exp(+j k D) / (rho c u0).
+        real, imaginary: shape (grid points, frequencies), p exp(+j k D) over the reference pressure.
         weights: shape (nodes, grid points).
     """
 
@@ -48,6 +48,10 @@ class FieldGrid:
     ) -> None:
         """A grid without any value yet.
 
+        Values are over the pressure at the reference point. Where harmonics have virtual sources that is the
+        pressure of each frequency, so that the burst is what passes the reference point; otherwise it is the
+        pressure at the drive's frequency, so that the burst is what the face does.
+
         Args:
             shape: the source.
             frequencies: shape (F,), Hz.
@@ -57,17 +61,21 @@ class FieldGrid:
         """
         self._shape = shape
         self._wavenumbers = 2 * np.pi * frequencies / speed
-        self._orders = frequencies / drive_hz if virtual else np.ones_like(frequencies)
+        self._wavenumbers[0] = max(self._wavenumbers[0], 1e-3 * self._wavenumbers[1])
+        self._orders = harmonic_orders(frequencies / drive_hz) if virtual else np.ones_like(frequencies)
         radii = np.array([shape.radius(o) for o in self._orders])
         self.fan_step = STEP / float(np.max(self._wavenumbers * radii))
         reach = 2 * STEP / float(np.max(self._wavenumbers * radii**2))
         self.reach_step = min(reach, 1 / (8 * shape.reference_m))
+        reference = self._at_reference()
+        drive = reference[np.argmin(np.abs(frequencies - drive_hz))]
+        self._scale = 1 / reference if virtual else np.full_like(reference, 1 / drive)
         self._tiles: set[tuple[int, int]] = set()
         self._reach_low = 0
         self._field = np.empty((0, 0, 2, frequencies.size), np.float32)
 
     def at(self, r: Real, z: Real) -> NDArray[np.complex64]:
-        """Pressure p exp(+j k D) / (rho c u0), shape (points, frequencies), interpolated."""
+        """Pressure p exp(+j k D) over the reference pressure, shape (points, frequencies), interpolated."""
         patch = self.patch(r, z)
         values = np.empty((r.size, patch.real.shape[1]), np.complex64)
         values.real = patch.weights @ patch.real
@@ -89,6 +97,14 @@ class FieldGrid:
         weights = (by_fan[:, :, None] * by_reach[:, None, :]).reshape(r.size, -1)
         field = self._field[rows, columns].reshape(weights.shape[1], 2, -1)
         return Patch(real=field[:, 0], imaginary=field[:, 1], weights=weights)
+
+    def _at_reference(self) -> NDArray[np.complex128]:
+        axis, place = np.zeros(1), np.array([self._shape.reference_m])
+        values = [
+            relative_pressure(self._shape, float(k), float(order), axis, place)[0]
+            for k, order in zip(self._wavenumbers, self._orders, strict=True)
+        ]
+        return np.array(values, np.complex128)
 
     def _cover(self, fan_low: int, fan_high: int, reach_low: int, reach_high: int) -> None:
         """Make whatever tiles are still missing."""
@@ -121,10 +137,22 @@ class FieldGrid:
         r = z * (fan * self.fan_step)[:, None]
         columns = slice(reach[0] - self._reach_low, reach[-1] + 1 - self._reach_low)
         for index, (wavenumber, order) in enumerate(zip(self._wavenumbers, self._orders, strict=True)):
-            pressure = relative_pressure(self._shape, float(wavenumber), float(order), r, z)
+            pressure = relative_pressure(self._shape, float(wavenumber), float(order), r, z) * self._scale[index]
             self._field[fan[0] : fan[-1] + 1, columns, 0, index] = pressure.real
             self._field[fan[0] : fan[-1] + 1, columns, 1, index] = pressure.imag
         self._tiles.add((i, j))
+
+
+def harmonic_orders(multiples: Real) -> Real:
+    """Which harmonic's virtual source each frequency takes, from frequencies over the drive's.
+
+    Whole numbers around each harmonic, where a burst has its energy, and a smooth passage between them: a
+    dispersion there would let sound arrive before its time.
+    """
+    lower = np.floor(multiples)
+    u = np.clip((multiples - lower - 0.25) / 0.5, 0.0, 1.0)
+    orders: Real = np.maximum(lower + u**3 * (10 - 15 * u + 6 * u**2), 1.0)
+    return orders
 
 
 def _scatter(lines: Index, weights: Real, count: int) -> Single:

@@ -80,7 +80,8 @@ class Record:
         count = self.frequencies.size
         within = np.exp(turn * np.arange(_COLUMNS))
         blocks = np.exp(turn * _COLUMNS * np.arange(-(-count // _COLUMNS)))
-        return (blocks[:, None] * within).astype(np.complex64).ravel()[:count]
+        factors: Complex = (blocks[:, None] * within).astype(np.complex64).ravel()[:count]
+        return factors
 
     def samples(self, spectrum: Complex) -> NDArray[np.float32]:
         """Shape (points,) from a spectrum at the record's frequencies."""
