@@ -73,11 +73,12 @@ def test_a_centred_element_hears_both_sides_alike(angle_deg: float, edge: Edge) 
     np.testing.assert_allclose(response(truth, angle_deg), response(truth, -angle_deg), rtol=0, atol=1e-5)
 
 
-def test_near_the_source_it_agrees_with_a_plain_sum_over_both_faces() -> None:
+@pytest.mark.parametrize("angle_deg", [3.0, 28.0])
+def test_near_the_source_it_agrees_with_a_plain_sum_over_both_faces(angle_deg: float) -> None:
     shape = SourceShape(radius_m=5e-3, focal_m=None, beam_exponent=1.0, reference_m=0.06)
     mount = Mount(MechanicsTruth(pivot_offset_mm=(0.2, 0.1, 0.3)))
-    placement = mount.place(Carriage(0.5e-3, -0.3e-3, 0.06, np.radians(28), 0.4))
-    found = Element(ElementTruth(radius_mm=0.5), FREQUENCIES).response(
+    placement = mount.place(Carriage(0.5e-3, -0.3e-3, 0.06, np.radians(angle_deg), 0.4))
+    found = Element(ElementTruth(radius_mm=1.0), FREQUENCIES).response(
         placement, FieldGrid(shape, FREQUENCIES, SPEED, DRIVE, virtual=False), SPEED
     )
 
@@ -88,7 +89,7 @@ def test_near_the_source_it_agrees_with_a_plain_sum_over_both_faces() -> None:
         points: np.ndarray = radius * np.sqrt(i / count)[:, None] * np.column_stack([np.cos(turn), np.sin(turn)])
         return points
 
-    uv = sunflower(300, 0.5e-3)
+    uv = sunflower(400, 1e-3)
     face = placement.centre + uv[:, :1] * placement.across + uv[:, 1:] * placement.upward
     source = np.pad(sunflower(9000, 5e-3), ((0, 0), (0, 1)))
     distance = np.linalg.norm(face[:, None, :] - source, axis=2)
