@@ -37,7 +37,7 @@ class SourceTruth(Model):
     focal_length_mm: Positive | None = Field(default=None, description="radius of curvature; left out: plane")
     reference_distance_mm: Positive = 120.0
     reference_drive_v: Positive = 10.0
-    reference_pressure_kpa: Positive = 400.0
+    reference_pressure_kpa: Positive = 1000.0
     shock_parameter: NonNegative | None = Field(
         default=None,
         description="at reference_drive_v; left out: worked out for a plane wave over the reference distance",
