@@ -1,0 +1,141 @@
+"""The pivot offset from arrival against angle.
+
+Element centre at (ex, ez) from the axis of rotation at angle zero; a plane wave along z then arrives at
+
+    t(theta) = t0 + (ez (cos theta - 1) - ex sin theta) / c + d n
+
+with d a slow drift along the order of visiting n (never the clock: a replay must agree). Linear least squares; the
+covariance is scaled by the observed residuals where they exceed the stated noise. Derived here; the curvature of
+the wave, X²/(2 L c), is put in by one more step.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+
+import numpy as np
+from numpy.typing import NDArray
+
+Vector = NDArray[np.float64]
+TIMING_FLOOR_S = 2e-11  # trigger jitter and sampling clock leave at least this much
+COLUMNS = 4
+
+
+@dataclass(frozen=True)
+class PivotEstimate:
+    """Pivot offset in metres with its covariance, shape (2, 2), order (x, z).
+
+    Attributes:
+        residual_sd_s: standard deviation of the arrivals about the fit.
+    """
+
+    x_m: float
+    z_m: float
+    covariance: Vector
+    residual_sd_s: float
+    arrival_s: float
+    drift_s: float
+    points: int
+
+    def arrival_at(self, theta: Vector, speed_m_s: float) -> Vector:
+        """Arrival relative to that at angle zero, seconds, shape of `theta`."""
+        return np.asarray((self.z_m * (np.cos(theta) - 1) - self.x_m * np.sin(theta)) / speed_m_s)
+
+
+@dataclass
+class PivotFit:
+    """Normal equations, one point at a time; memory and cost per point do not grow.
+
+    `order_scale` is the number of points planned; it only scales the drift column.
+    """
+
+    speed_m_s: float
+    distance_m: float
+    order_scale: int
+    normal: Vector = field(default_factory=lambda: np.zeros((COLUMNS, COLUMNS)))
+    moment: Vector = field(default_factory=lambda: np.zeros(COLUMNS))
+    square: float = 0.0
+    weight: float = 0.0
+    points: int = 0
+    origin_s: float = 0.0
+
+    def row(self, theta: float, order: int) -> Vector:
+        """Row of the model: constant, ex, ez, drift."""
+        c = self.speed_m_s
+        return np.array([1.0, -np.sin(theta) / c, (np.cos(theta) - 1) / c, order / max(self.order_scale, 1) - 0.5])
+
+    def add(self, theta: float, arrival_s: float, sigma_s: float, order: int) -> None:
+        """Take one arrival with its standard uncertainty."""
+        if not self.points:
+            self.origin_s = arrival_s
+        weight = 1.0 / (sigma_s**2 + TIMING_FLOOR_S**2)
+        row = self.row(theta, order)
+        value = arrival_s - self.origin_s
+        self.normal += weight * np.outer(row, row)
+        self.moment += weight * value * row
+        self.square += weight * value**2
+        self.weight += weight
+        self.points += 1
+
+    def estimate(self, drift: bool = True) -> PivotEstimate | None:
+        """The fit so far, or None while the angles do not determine it."""
+        kept = COLUMNS if drift else COLUMNS - 1
+        if self.points < kept + 2:
+            return None
+        scale = np.sqrt(np.diag(self.normal)[:kept])
+        if (scale <= 0).any():
+            return None
+        scaled = self.normal[:kept, :kept] / np.outer(scale, scale)
+        if np.linalg.cond(scaled) > 1e12:
+            return None
+        inverse = np.linalg.inv(scaled) / np.outer(scale, scale)
+        solution = inverse @ self.moment[:kept]
+        chi2 = max(0.0, self.square - float(solution @ self.moment[:kept]))
+        freedom = self.points - kept
+        covariance = inverse * max(1.0, chi2 / freedom)
+        _, x, z = solution[:3]
+        # the curvature of the wave adds X^2/(2 L c), X = ex cos + ez sin; with sin^2 = 2 (1 - cos) and
+        # sin cos = sin to leading order it takes the columns of ex and ez, and is put right there
+        bend = 1 / self.distance_m if self.distance_m > 0 else 0.0
+        x, z = x + x * z * bend, z + (z**2 - x**2) * bend
+        return PivotEstimate(
+            x_m=float(x),
+            z_m=float(z),
+            covariance=covariance[1:3, 1:3],
+            residual_sd_s=float(np.sqrt(chi2 / self.weight * self.points / freedom)),
+            arrival_s=float(solution[0]) + self.origin_s,
+            drift_s=float(solution[3]) if drift else 0.0,
+            points=self.points,
+        )
+
+
+def fit_pivot(
+    theta: Vector, arrival_s: Vector, sigma_s: Vector, order: NDArray[np.intp], speed_m_s: float, distance_m: float
+) -> PivotEstimate | None:
+    """All points at once; those far off (over five standard deviations) are left out once.
+
+    All arrays have shape (n,): angles in rad, arrivals and their standard uncertainties in s, place in the order
+    of visiting. None is returned where the angles do not determine the offset.
+    """
+    fit = _fitted(theta, arrival_s, sigma_s, order, speed_m_s, distance_m)
+    estimate = fit.estimate()
+    if estimate is None:
+        return None
+    drift = np.array(order) / max(fit.order_scale, 1) - 0.5
+    model = estimate.arrival_s + estimate.arrival_at(theta, speed_m_s) + estimate.drift_s * drift
+    residual = np.abs(arrival_s - model)
+    spread = 1.4826 * float(np.median(residual))
+    kept = residual <= 5 * max(spread, TIMING_FLOOR_S)
+    if kept.all():
+        return estimate
+    again = _fitted(theta[kept], arrival_s[kept], sigma_s[kept], order[kept], speed_m_s, distance_m).estimate()
+    return again or estimate
+
+
+def _fitted(
+    theta: Vector, arrival_s: Vector, sigma_s: Vector, order: NDArray[np.intp], speed_m_s: float, distance_m: float
+) -> PivotFit:
+    fit = PivotFit(speed_m_s, distance_m, int(order.max(initial=0)))
+    for a, t, s, n in zip(theta, arrival_s, sigma_s, order, strict=True):
+        fit.add(float(a), float(t), float(s), int(n))
+    return fit
