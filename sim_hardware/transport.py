@@ -11,6 +11,7 @@ import os
 import pty
 import selectors
 import socket
+import time
 import tty
 from collections.abc import Callable, Sequence
 from pathlib import Path
@@ -21,7 +22,9 @@ from sim_hardware.conversation import Conversation
 
 RECEIVE = 65_536
 READ = selectors.EVENT_READ
+LINGER_S = 50e-6
 Piece = bytes | memoryview
+Ready = list[tuple[selectors.SelectorKey, int]]
 
 
 class Port(Protocol):
@@ -73,24 +76,30 @@ class Loop:
     def run(self) -> None:
         """Until `stop`."""
         self._running = True
-        more_to_do = False
+        served = False
         while self._running:
-            more_to_do = self.round(0.0 if more_to_do else None)
+            ready = self._look_again() if served else []
+            if not ready:
+                wait = 0.0 if self._idle() else self._timeline.real_seconds_to_next()
+                ready = self._selector.select(wait)
+            served = bool(ready)
+            self._serve(ready)
 
-    def round(self, longest_s: float | None) -> bool:
-        """Serve what is there, waiting at most that long; True when work ahead is left."""
-        wait = self._timeline.real_seconds_to_next()
-        if wait is None or (longest_s is not None and longest_s < wait):
-            wait = longest_s
-        ready = self._selector.select(wait)
+    def _look_again(self) -> Ready:
+        """A client that has just been answered asks again soon; to be put to sleep and woken takes longer."""
+        end = time.perf_counter() + LINGER_S
+        while time.perf_counter() < end:
+            ready = self._selector.select(0.0)
+            if ready:
+                return ready
+        return []
+
+    def _serve(self, ready: Ready) -> None:
         for key, events in ready:
             key.data.ready(events)
         self._timeline.run_due()
         for line in [line for line in self._lines if line.conversation.waiting]:
             line.say(line.conversation.poll())
-        if ready:
-            return True
-        return self._idle()
 
     def close(self) -> None:
         """Close every port that is left."""

@@ -6,7 +6,7 @@ Distances are fractions of a move (1 is all of it), so that several axes can fol
 from __future__ import annotations
 
 from dataclasses import dataclass
-from math import inf, sqrt
+from math import sqrt
 from typing import Protocol
 
 
@@ -90,4 +90,4 @@ class Brake:
         return max(0.0, self.start_speed - self.acceleration * max(t, 0.0))
 
 
-STANDING = Brake(0.0, inf)
+STANDING = Brake(0.0, 1.0)
