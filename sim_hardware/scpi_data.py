@@ -12,10 +12,8 @@ from sim_hardware.scpi_errors import ScpiError
 from sim_hardware.scpi_syntax import Datum
 
 # SCPI-1999 volume 1, 7.3 / IEEE 488.2, 7.7.3: multipliers; MHZ alone is mega, not milli
-_MULTIPLIERS = {
-    "": 1.0, "G": 1e9, "MA": 1e6, "K": 1e3, "M": 1e-3, "U": 1e-6, "N": 1e-9, "P": 1e-12,
-}  # fmt: skip
-_NUMBER = re.compile(r"([+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?)(.*)")
+_MULTIPLIERS = {"": 0, "G": 9, "MA": 6, "K": 3, "M": -3, "U": -6, "N": -9, "P": -12}  # powers of ten
+_NUMBER = re.compile(r"([+-]?(?:\d+\.?\d*|\.\d+))(?:[eE]([+-]?\d+))?(.*)")
 _FORM = re.compile(r"([A-Z][A-Z0-9_]*)([a-z0-9_]*)")
 
 
@@ -43,11 +41,11 @@ def numeric_suffix(digits: bytes, highest: int) -> int:
     return number
 
 
-def _unit_factors(unit: str) -> dict[str, float]:
-    factors = {prefix + unit: factor for prefix, factor in _MULTIPLIERS.items()}
+def _unit_powers(unit: str) -> dict[str, int]:
+    powers = {prefix + unit: power for prefix, power in _MULTIPLIERS.items()}
     if unit == "HZ":
-        factors["MHZ"] = 1e6
-    return factors
+        powers["MHZ"] = 6
+    return powers
 
 
 def _refuse(datum: Datum) -> ScpiError:
@@ -55,7 +53,7 @@ def _refuse(datum: Datum) -> ScpiError:
     return ScpiError(numbers[datum.kind])
 
 
-def _number(datum: Datum, factors: Mapping[str, float]) -> float:
+def _number(datum: Datum, powers: Mapping[str, int]) -> float:
     if len(datum.value) > 255:
         raise ScpiError(-124)
     if datum.kind == "nondecimal":
@@ -68,12 +66,13 @@ def _number(datum: Datum, factors: Mapping[str, float]) -> float:
     match = _NUMBER.fullmatch(text)
     if match is None:
         raise ScpiError(-121)
-    suffix = match.group(2).upper()
-    if suffix and not factors:
+    mantissa, exponent, suffix = match.group(1), match.group(2) or "0", match.group(3).upper()
+    if suffix and not powers:
         raise ScpiError(-138)
-    if suffix and suffix not in factors:
+    if suffix and suffix not in powers:
         raise ScpiError(-131)
-    value = float(match.group(1)) * (factors[suffix] if suffix else 1.0)
+    # by the exponent and not by a factor: 12.5 US is then exactly 12.5E-6
+    value = float(f"{mantissa}E{int(exponent) + (powers[suffix] if suffix else 0)}")
     if not isfinite(value):
         raise ScpiError(-123)
     return value
@@ -84,7 +83,7 @@ class Real:
 
     def __init__(self, low: float, high: float, *units: str) -> None:
         self.low, self.high = low, high
-        self._factors = {name: factor for unit in units for name, factor in _unit_factors(unit).items()}
+        self._powers = {name: power for unit in units for name, power in _unit_powers(unit).items()}
 
     def read(self, datum: Datum) -> float:
         """Raises -222 outside the limits."""
@@ -92,7 +91,7 @@ class Real:
             return self.low
         if datum.kind == "word" and datum.value in (b"MAX", b"MAXIMUM"):
             return self.high
-        value = _number(datum, self._factors)
+        value = _number(datum, self._powers)
         if not self.low <= value <= self.high:
             raise ScpiError(-222)
         return value
