@@ -72,10 +72,7 @@ class PrefixStage:
             except Refused as error:
                 refused = refused or "PA" in unit
                 self._errors.append(error.number)
-        try:
-            self._start(moves, refused)
-        except Refused as error:
-            self._errors.append(error.number)
+        self._start(moves, refused)
         return replies
 
     def _parse(self, unit: str) -> tuple[str, str, str]:
@@ -103,9 +100,10 @@ class PrefixStage:
         moves.clear()
         if not wanted or refused:
             return
-        if not self._motion.may_go({**{a: self._motion.target(a) for a in self._limits}, **wanted}):
-            raise Refused(OUT_OF_RANGE)
-        self._motion.go_each(wanted, self._limits)
+        if self._motion.may_go(wanted):
+            self._motion.go_each(wanted, self._limits)
+        else:
+            self._errors.append(OUT_OF_RANGE)
 
     def _do(self, prefix: str, command: str, argument: str) -> list[str]:
         if argument == "?":
