@@ -37,9 +37,7 @@ class ArrivalTracker:
         low, high = circumstances.side_lines_hz
         self._spacing_hz = float(high - low)
         self._distance_m = circumstances.distance_m
-        self._expected_s = (
-            circumstances.record_start_s + circumstances.gate.start * circumstances.sample_interval_s
-        )
+        self._expected_s = circumstances.record_start_s + circumstances.gate.start * circumstances.sample_interval_s
         self._between: float | None = None
         self._strength = 0.0
 

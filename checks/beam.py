@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -41,9 +42,7 @@ def width_of(position_m: Vector, amplitude: Vector, sigma: Vector, level_db: flo
     from scipy.interpolate import CubicSpline
 
     if position_m.size < FEWEST:
-        raise MeasurementError(
-            f"a width needs {FEWEST} points or more along the line; {position_m.size} were given"
-        )
+        raise MeasurementError(f"a width needs {FEWEST} points or more along the line; {position_m.size} were given")
     up = np.argsort(position_m)
     x, y, s = position_m[up], amplitude[up], sigma[up]
     curve = CubicSpline(x, y)
@@ -55,9 +54,7 @@ def width_of(position_m: Vector, amplitude: Vector, sigma: Vector, level_db: flo
     below = values < wanted
     left_side, right_side = np.nonzero(below[:top])[0], np.nonzero(below[top:])[0]
     if not left_side.size or not right_side.size:
-        raise MeasurementError(
-            f"the profile does not fall to {level_db:g} dB on both sides of its peak within the line: a longer span"
-        )
+        raise MeasurementError(f"the profile does not fall to {level_db:g} dB on both sides of its peak: a longer span")
     left = _root(curve, wanted, float(fine[left_side[-1]]), float(fine[left_side[-1] + 1]))
     right = _root(curve, wanted, float(fine[top + right_side[0] - 1]), float(fine[top + right_side[0]]))
     slope = curve.derivative()
@@ -68,19 +65,19 @@ def width_of(position_m: Vector, amplitude: Vector, sigma: Vector, level_db: flo
     return Width(left, right, peak, float(np.sqrt(variance + common**2)))
 
 
-def _refined_top(curve: object, near: float, x: Vector) -> float:
+def _refined_top(curve: Any, near: float, x: Vector) -> float:
     from scipy.optimize import minimize_scalar
 
     step = float(np.median(np.diff(x)))
     bounds = (max(float(x[0]), near - step), min(float(x[-1]), near + step))
-    found = minimize_scalar(lambda at: -float(curve(at)), bounds=bounds, method="bounded")  # type: ignore[operator]
+    found = minimize_scalar(lambda at: -float(curve(at)), bounds=bounds, method="bounded")
     return float(found.x)
 
 
-def _root(curve: object, wanted: float, a: float, b: float) -> float:
+def _root(curve: Any, wanted: float, a: float, b: float) -> float:
     from scipy.optimize import brentq
 
-    return float(brentq(lambda at: float(curve(at)) - wanted, a, b))  # type: ignore[operator]
+    return float(brentq(lambda at: float(curve(at)) - wanted, a, b))
 
 
 def _sigma_at(x: Vector, sigma: Vector, at: float) -> float:

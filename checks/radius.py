@@ -71,9 +71,7 @@ def told_apart(fits: Sequence[RadiusFit]) -> bool:
     return len(fits) < 2 or fits[1].criterion - fits[0].criterion > CANNOT_TELL
 
 
-def _fit(
-    plane: PlaneResponse, lines: NDArray[np.intp], speed_m_s: float, nominal_m: float, edge: Edge
-) -> RadiusFit:
+def _fit(plane: PlaneResponse, lines: NDArray[np.intp], speed_m_s: float, nominal_m: float, edge: Edge) -> RadiusFit:
     from scipy.optimize import least_squares
 
     rows = plane.arrival_usable

@@ -102,9 +102,7 @@ def raster_map(state: ViewState, width: int, height: int) -> RenderableType:
     """Peak pressure over the raster as it fills, in steps of 3 dB below the largest so far; or a profile."""
     points = [p for p in state.shown() if not p.reference]
     spans = (
-        [(max(c) - min(c), i) for i, c in enumerate(zip(*(p.pose[:3] for p in points), strict=True))]
-        if points
-        else []
+        [(max(c) - min(c), i) for i, c in enumerate(zip(*(p.pose[:3] for p in points), strict=True))] if points else []
     )
     moving = [i for span, i in spans if span > 0]
     if not moving:

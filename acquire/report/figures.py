@@ -145,9 +145,7 @@ def waveform_and_spectrum(
     upper.legend(fontsize="small")
     lower.plot(frequency_mhz, spectrum_db, color=CURVES[0], linewidth=0.6)
     if usable_mhz.size:
-        lower.plot(
-            usable_mhz, np.full(usable_mhz.size, 3.0), "v", color=CURVES[1], markersize=4, label="usable lines"
-        )
+        lower.plot(usable_mhz, np.full(usable_mhz.size, 3.0), "v", color=CURVES[1], markersize=4, label="usable lines")
         lower.legend(fontsize="small")
     lower.set(xlabel="frequency / MHz", ylabel="level re largest / dB", ylim=(-90, 8), xlim=(0, frequency_mhz[-1]))
     return figure
@@ -159,9 +157,7 @@ def beam_map(
     """Level (y, x) re its largest, with the −6 dB contour and the peak."""
     figure = blank(6.2, 5.0)
     axes = figure.add_subplot()
-    mesh = axes.pcolormesh(
-        x_mm, y_mm, level_db, vmin=-30, vmax=0, cmap="cividis", shading="nearest", rasterized=True
-    )
+    mesh = axes.pcolormesh(x_mm, y_mm, level_db, vmin=-30, vmax=0, cmap="cividis", shading="nearest", rasterized=True)
     axes.contour(x_mm, y_mm, level_db, levels=[-6.0], colors="white", linewidths=1.2)
     axes.plot(*peak_mm, "+", color=CURVES[1], markersize=10)
     axes.set(xlabel=f"{labels[0]} / mm", ylabel=f"{labels[1]} / mm", aspect="equal")

@@ -50,9 +50,7 @@ def table(head: Sequence[str], rows: Sequence[Sequence[str]]) -> str:
     lines = []
     for row in rows:
         cells = "".join(
-            f'<td class="number">{escape(c)}</td>'
-            if c[:1].isdigit() or c[:1] in "-−+"
-            else f"<td>{escape(c)}</td>"
+            f'<td class="number">{escape(c)}</td>' if c[:1].isdigit() or c[:1] in "-−+" else f"<td>{escape(c)}</td>"
             for c in row
         )
         lines.append(f"<tr>{cells}</tr>")

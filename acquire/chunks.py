@@ -1,0 +1,99 @@
+"""Full chunks on their way into the store, written beside the recorder's own work."""
+
+from __future__ import annotations
+
+import hashlib
+from collections.abc import Sequence
+from concurrent.futures import Future, ThreadPoolExecutor
+from dataclasses import dataclass, field
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from acquire.journal import Journal
+from acquire.layout import CHUNK, WIDE_CHUNK, write_columns, write_counts
+from acquire.record import PointRecord
+from checks.observation import Observation
+
+
+@dataclass
+class ChunkWriter:
+    """Collects points into chunks; one thread writes them, and only then lets the journal forget them.
+
+    Attributes:
+        digests: SHA-256 of the raw counts of each chunk, by its number.
+    """
+
+    path: Path
+    journal: Journal
+    samples: int
+    dtype: np.dtype[Any]
+    digests: dict[int, str] = field(default_factory=dict)
+
+    def __post_init__(self) -> None:
+        self._pool = ThreadPoolExecutor(1, "chunks")
+        self._pending: list[Future[None]] = []
+        self._counts = self._fresh()
+        self._records: list[PointRecord] = []
+        self._wide: list[tuple[PointRecord, Observation]] = []
+
+    def _fresh(self) -> NDArray[Any]:
+        return np.zeros((CHUNK, self.samples), self.dtype)
+
+    def place(self, index: int, counts: NDArray[Any]) -> NDArray[Any]:
+        """Copy a point's counts into the chunk in hand; the row stays valid until the chunk is full."""
+        row: NDArray[Any] = self._counts[index % CHUNK]
+        row[:] = counts
+        return row
+
+    def add(self, records: Sequence[PointRecord], seen: Sequence[Observation]) -> None:
+        """Points whose counts were placed, reduced; in order, within one chunk."""
+        self._records += records
+        self._wide += zip(records, seen, strict=True)
+        if self._records and self._records[-1].index % CHUNK == CHUNK - 1:
+            self._submit_counts()
+        if self._wide and self._wide[-1][0].index % WIDE_CHUNK == WIDE_CHUNK - 1:
+            self._submit_columns()
+        self._raise_failures()
+
+    def flush(self) -> None:
+        """Write what is left and wait for it.
+
+        Raises:
+            OSError: the disk did not take it.
+        """
+        if self._records:
+            self._submit_counts()
+        if self._wide:
+            self._submit_columns()
+        for future in self._pending:
+            future.result()
+        self._pending.clear()
+
+    def close(self) -> None:
+        """End the thread."""
+        self._pool.shutdown(cancel_futures=True)
+
+    def _submit_counts(self) -> None:
+        number, full, records = self._records[0].index // CHUNK, self._counts[: len(self._records)], self._records
+        self._pending.append(self._pool.submit(self._write, number, full, records))
+        self._counts, self._records = self._fresh(), []
+
+    def _submit_columns(self) -> None:
+        first = self._wide[0][0].index
+        records, seen = zip(*self._wide, strict=True)
+        self._pending.append(self._pool.submit(write_columns, self.path, first, records, seen))
+        self._wide = []
+
+    def _write(self, number: int, counts: NDArray[Any], records: list[PointRecord]) -> None:
+        write_counts(self.path, number, counts)
+        self.digests[number] = hashlib.sha256(counts.data).hexdigest()
+        self.journal.chunk_is_durable(number, records)
+
+    def _raise_failures(self) -> None:
+        done = [f for f in self._pending if f.done()]
+        self._pending = [f for f in self._pending if not f.done()]
+        for future in done:
+            future.result()

@@ -1,0 +1,133 @@
+"""Where a point is safe from the moment it is announced until its chunk is durable.
+
+A folder beside the store. `points.log` holds the records of points whose counts are in the store already;
+`segment-<chunk>.bin` holds record and counts of the points of a chunk that is not. Every entry has a checksum;
+reading ends at the first one that is not whole, which is where a death left the file.
+"""
+
+from __future__ import annotations
+
+import os
+import shutil
+import struct
+import zlib
+from collections.abc import Iterator
+from pathlib import Path
+from typing import Any, BinaryIO
+
+import msgspec
+import numpy as np
+from numpy.typing import NDArray
+
+from acquire.record import PointRecord
+
+HEAD = struct.Struct("<4sIII")  # magic, length of the record, length of the counts, CRC of both
+MAGIC = b"TPJ1"
+encode = msgspec.msgpack.Encoder().encode
+decode = msgspec.msgpack.Decoder(PointRecord).decode
+
+
+def journal_folder(store: Path) -> Path:
+    """The journal of a store, `NAME.journal` beside `NAME.zarr`."""
+    return store.with_suffix(".journal")
+
+
+def sync_folder(folder: Path) -> None:
+    """Make the names in a folder durable."""
+    descriptor = os.open(folder, os.O_RDONLY)
+    try:
+        os.fsync(descriptor)
+    finally:
+        os.close(descriptor)
+
+
+class Journal:
+    """Appends; nothing is safe before `sync` has returned."""
+
+    def __init__(self, store: Path, chunk: int) -> None:
+        self.folder = journal_folder(store)
+        self.folder.mkdir(exist_ok=True)
+        self._chunk = chunk
+        self._segment: BinaryIO | None = None
+        self._number = -1
+
+    def add(self, record: PointRecord, counts: NDArray[Any]) -> None:
+        """Append a point."""
+        number = record.index // self._chunk
+        if number != self._number:
+            self._open_segment(number)
+        if self._segment is None:
+            raise RuntimeError("no segment is open")
+        _append(self._segment, encode(record), counts.data.cast("B"))
+
+    def _open_segment(self, number: int) -> None:
+        self.sync()
+        if self._segment is not None:
+            self._segment.close()
+        self._segment = (self.folder / f"segment-{number:08d}.bin").open("ab", buffering=0)
+        self._number = number
+        sync_folder(self.folder)
+
+    def sync(self) -> None:
+        """Make all that was added durable."""
+        if self._segment is not None:
+            os.fdatasync(self._segment.fileno())
+
+    def chunk_is_durable(self, number: int, records: list[PointRecord]) -> None:
+        """The counts of a chunk are in the store: keep its records, drop its segment."""
+        with (self.folder / "points.log").open("ab", buffering=0) as log:
+            for record in records:
+                _append(log, encode(record), b"")
+            os.fdatasync(log.fileno())
+        (self.folder / f"segment-{number:08d}.bin").unlink(missing_ok=True)
+
+    def close(self) -> None:
+        """Close the files; the journal stays."""
+        if self._segment is not None:
+            self._segment.close()
+            self._segment = None
+
+    def remove(self) -> None:
+        """Everything is in the store."""
+        self.close()
+        shutil.rmtree(self.folder)
+
+
+def _append(file: BinaryIO, record: bytes, counts: bytes | memoryview) -> None:
+    check = zlib.crc32(counts, zlib.crc32(record))
+    entry = b"".join((HEAD.pack(MAGIC, len(record), len(counts), check), record, counts))
+    written = file.write(entry)
+    if written != len(entry):
+        raise OSError(28, "the disk took only part of an entry")
+
+
+def _entries(path: Path) -> Iterator[tuple[PointRecord, bytes]]:
+    with path.open("rb") as file:
+        while len(head := file.read(HEAD.size)) == HEAD.size:
+            magic, record_length, counts_length, check = HEAD.unpack(head)
+            if magic != MAGIC:
+                return
+            body = file.read(record_length + counts_length)
+            if len(body) < record_length + counts_length or zlib.crc32(body) != check:
+                return
+            yield decode(body[:record_length]), body[record_length:]
+
+
+def read_journal(
+    store: Path, dtype: np.dtype[Any], first: int = 0
+) -> tuple[list[PointRecord], dict[int, NDArray[Any]]]:
+    """What a journal holds from point `first` on: records without gaps, and counts that are not in the store yet."""
+    folder = journal_folder(store)
+    records: dict[int, PointRecord] = {}
+    counts: dict[int, NDArray[Any]] = {}
+    log = folder / "points.log"
+    if log.exists():
+        records |= {record.index: record for record, _ in _entries(log)}
+    for segment in sorted(folder.glob("segment-*.bin")):
+        for record, data in _entries(segment):
+            records[record.index] = record
+            counts[record.index] = np.frombuffer(data, dtype)
+    whole: list[PointRecord] = []
+    while first + len(whole) in records:
+        whole.append(records[first + len(whole)])
+    return whole, {i: c for i, c in counts.items() if first <= i < first + len(whole)}

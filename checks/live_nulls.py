@@ -1,0 +1,190 @@
+"""Frequencies without energy, and why: the source has none there, an echo takes it away, or the element cannot hear it.
+
+A null of the source stands at one frequency at every angle and on one line alone; an echo makes a ripple over all
+lines; a null of the element moves with angle so that f sin(theta) stays the same.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from math import log10, pi, sin
+
+import numpy as np
+from numpy.typing import NDArray
+
+from checks.arrival import ArrivalTracker
+from checks.finding import Change, Finding, Size
+from checks.observation import Circumstances, Observation
+from checks.standing import Standing
+from checks.water import speed_of_sound
+from checks.wording import decibel, mhz, rounded
+
+FIRST_NULL = 3.8317059702  # first zero of J1
+DIP_DB = 10.0
+RIPPLE_DB = 0.7
+RIPPLE_LINES = 8
+RIPPLE_EXPLAINS = 0.8
+SMOOTH_TERMS = 4  # a cubic in the number of the harmonic
+DELAYS = 64
+STRONG = 3.0
+
+
+class SpectrumCheck:
+    """`null.source` and `null.echo`, from the mean spectrum of the reference points.
+
+    Model: the level of harmonic n in dB is a cubic in n. A source's null: one line lies 10 dB or more below the line
+    through its neighbours. An echo of delay tau: ripple g cos(2 pi n f tau) on top of the cubic; lines are f apart,
+    so tau is known up to whole cycles of f. Statistic: share of the residual sum of squares that the best of 64
+    delays explains; threshold 0.8 with an amplitude of 0.7 dB or more (common practice, no source).
+    """
+
+    def __init__(self, circumstances: Circumstances) -> None:
+        self._frequencies = circumstances.frequencies_hz
+        self._drive_hz = circumstances.drive_hz
+        self._power = np.zeros(self._frequencies.size)
+        self._noise = np.zeros(self._frequencies.size)
+        self._count = 0
+        self._source = Standing()
+        self._echo = Standing()
+
+    def update(self, seen: Observation) -> Iterable[Change]:
+        """One more point; only reference points count."""
+        if not seen.reference:
+            return []
+        self._count += 1
+        self._power += np.abs(seen.components) ** 2
+        self._noise += 2 * seen.component_noise_v**2
+        clean = (self._power - self._noise) / self._count
+        floor = np.maximum(self._noise / self._count, 1e-300)
+        level = 10 * np.log10(np.maximum(clean, floor))
+        strong = clean > 10 * floor
+        ripple = self._ripple(level, strong)
+        changes = self._echo.now(self._say_echo(ripple, seen.index) if ripple else None, seen.index)
+        dips = [] if ripple else self._dips(level, strong)
+        return [*changes, *self._source.now(self._say_source(dips, seen.index) if dips else None, seen.index)]
+
+    def finish(self) -> Iterable[Change]:
+        """Nothing more to say."""
+        return []
+
+    def _dips(self, level: NDArray[np.float64], strong: NDArray[np.bool_]) -> list[tuple[int, float]]:
+        """Lines that lie far below the straight line between their neighbours, where those are strong."""
+        found = []
+        for i in range(1, level.size - 1):
+            depth = (level[i - 1] + level[i + 1]) / 2 - level[i]
+            if strong[i - 1] and strong[i + 1] and depth > DIP_DB:
+                found.append((i, float(depth)))
+        return found
+
+    def _ripple(self, level: NDArray[np.float64], strong: NDArray[np.bool_]) -> tuple[float, float] | None:
+        """Amplitude in dB and delay in s (up to whole cycles) of a ripple over the strong lines, or None."""
+        lines = np.nonzero(strong)[0]
+        if lines.size < RIPPLE_LINES:
+            return None
+        n = lines + 1.0
+        smooth = np.vander((n - n.mean()) / n.size, SMOOTH_TERMS)
+        y = level[lines]
+        plain = y - smooth @ np.linalg.lstsq(smooth, y, rcond=None)[0]
+        total = float(plain @ plain)
+        best = (0.0, 0.0, 0.0)
+        for step in range(4, DELAYS // 2 + 1):  # slower ripples are part of the cubic
+            turn = 2 * pi * step / DELAYS
+            model = np.hstack([smooth, np.cos(turn * n)[:, None], np.sin(turn * n)[:, None]])
+            solution = np.linalg.lstsq(model, y, rcond=None)[0]
+            rest = y - model @ solution
+            explained = 1 - float(rest @ rest) / max(total, 1e-30)
+            if explained > best[0]:
+                best = (explained, float(np.hypot(*solution[-2:])), step / DELAYS / self._drive_hz)
+        freedom = lines.size - SMOOTH_TERMS - 2
+        needed = 1 - (1 - RIPPLE_EXPLAINS) * min(1.0, freedom / RIPPLE_LINES)
+        return (best[1], best[2]) if best[0] >= needed and best[1] >= RIPPLE_DB else None
+
+    def _say_source(self, dips: list[tuple[int, float]], at: int) -> Finding:
+        names = ", ".join(mhz(float(self._frequencies[i])) for i, _ in dips)
+        depth = max(d for _, d in dips)
+        return Finding(
+            code="null.source",
+            severity="caution",
+            summary=f"the source has next to no energy at {names}, {depth:.0f} dB below its neighbours",
+            sizes=tuple(Size("frequency", float(self._frequencies[i]), self._drive_hz / 2, "Hz") for i, _ in dips),
+            points=(0, at, self._count),
+            consequence="the response at this frequency is a ratio of small numbers at every angle",
+            remedy="leave this frequency out, or shift the drive frequency by a few percent",
+        )
+
+    def _say_echo(self, ripple: tuple[float, float], at: int) -> Finding:
+        amplitude, delay = ripple
+        level = 20 * log10(max(1e-6, (10 ** (amplitude / 20) - 1)))
+        return Finding(
+            code="null.echo",
+            severity="caution",
+            summary=f"the spectrum ripples by ±{decibel(amplitude)}: an echo {delay * 1e6:.2f} us (and whole cycles of "
+            f"{1e6 / self._drive_hz:.2f} us) after the burst lies in the gate",
+            sizes=(Size("ripple", amplitude, amplitude / 10, "dB"),),
+            points=(0, at, self._count),
+            consequence=f"an echo of about {level:.0f} dB interferes, and differently at every angle",
+            remedy="find the reflector, lengthen the way around it, or shorten the burst so that the gate ends before it",
+        )
+
+
+class ElementNullCheck:
+    """`null.element`: where the element does not hear, by its own size.
+
+    Model: the signed response crosses zero where f sin(theta) = 3.8317 c/(2 pi a). Statistic: over all lines, the
+    largest f sin(theta) with a positive and the smallest with a negative response, each three standard deviations
+    clear of zero. A note: the response is measured there, and it is none.
+    """
+
+    def __init__(self, circumstances: Circumstances) -> None:
+        self._frequencies = circumstances.frequencies_hz
+        self._tracker = ArrivalTracker(circumstances)
+        self._phase: NDArray[np.complex128] | None = None
+        self._positive, self._negative = 0.0, np.inf
+        self._limit = 1.6 * FIRST_NULL * 1500 / (2 * pi * circumstances.nominal_radius_m)
+        self._standing = Standing()
+        self._points = 0
+
+    def update(self, seen: Observation) -> Iterable[Change]:
+        """One more point."""
+        arrival = self._tracker.update(seen)
+        if not arrival.usable:
+            return []
+        turned = seen.components * np.exp(2j * pi * self._frequencies * arrival.time_s)
+        if self._phase is None:
+            if not seen.reference and abs(seen.commanded.theta) > 1e-3:
+                return []
+            self._phase = np.exp(-1j * np.angle(turned))
+        self._points += 1
+        signed = (turned * self._phase).real
+        product = self._frequencies * abs(sin(seen.commanded.theta))
+        clear = (np.abs(signed) > STRONG * seen.component_noise_v) & (product < self._limit)
+        if (clear & (signed < 0)).any():
+            self._negative = min(self._negative, float(product[clear & (signed < 0)].min()))
+        below = clear & (signed > 0) & (product < self._negative)
+        if below.any():
+            self._positive = max(self._positive, float(product[below].max()))
+        if not np.isfinite(self._negative) or self._positive <= 0:
+            return []
+        return self._standing.now(self._finding(seen), seen.index)
+
+    def finish(self) -> Iterable[Change]:
+        """Nothing more to say."""
+        return []
+
+    def _finding(self, seen: Observation) -> Finding:
+        low, high = min(self._positive, self._negative), self._negative
+        middle, u = (low + high) / 2, max((high - low) / (2 * 3**0.5), 1e3)
+        c = speed_of_sound(seen.temperature_c)
+        radius = FIRST_NULL * c / (2 * pi * middle)
+        top = float(self._frequencies[-1])
+        at = np.degrees(np.arcsin(min(1.0, middle / top)))
+        return Finding(
+            code="null.element",
+            severity="note",
+            summary=f"the element's first null lies at f sin(theta) = {rounded(middle / 1e6, u / 1e6)} MHz, as for a "
+            f"radius of {radius * 1e3:.3g} mm",
+            sizes=(Size("f sin(theta)", middle, u, "Hz"),),
+            points=(0, seen.index, self._points),
+            consequence=f"at {mhz(top)} the response has its first null near {at:.1f}°: levels about it are noise",
+            remedy="none is needed: it is a property of the element",
+        )

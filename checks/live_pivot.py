@@ -1,0 +1,174 @@
+"""The axis of rotation beside the element centre, and jumps of the arrival that no turn explains."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from math import cos, degrees, hypot, pi, sin, sqrt
+from statistics import NormalDist
+
+import numpy as np
+
+from checks.arrival import Arrival, ArrivalTracker
+from checks.element import X_6DB
+from checks.finding import Change, Finding, Severity, Size
+from checks.observation import Circumstances, Observation
+from checks.pivot import PivotEstimate, PivotFit
+from checks.standing import Standing
+from checks.water import speed_of_sound
+from checks.wording import decibel, mhz, mm
+
+FEWEST = 12
+SETTLED = 20  # points after which a single arrival can be held against the fit
+LEVEL_MATTERS_DB = 0.1
+ANGLE_MATTERS = 2e-3  # rad: the element looks at the source under another angle
+STEP_MATTERS_M = 20e-6
+STEP_POINTS = 3  # in a row, to one side
+
+
+class PivotCheck:
+    """`pivot.offset` and `arrival.step`.
+
+    Model: t = t0 + (ez (cos - 1) - ex sin)/c + drift, see `checks.pivot`. Statistic: e' C^-1 e with the covariance
+    scaled by the residuals; for a bench in order it is Hotelling's T-squared with 2 and n - 4 degrees of freedom,
+    whose quantile has a closed form. Threshold: false alarms per scan shared out over its points.
+
+    It speaks when the offset is significant *and* moves the wanted result: the element swings through the beam,
+    whose width at the highest wanted frequency is taken from that of a piston (2 x 2.21 z/(k a), linear theory),
+    or it sees the source under another angle.
+
+    A jump: the arrival of one point against the fit of the ones before it, standardised; several in a row to one
+    side. Distribution: normal with the spread of the residuals.
+    """
+
+    def __init__(self, circumstances: Circumstances, false_alarm_rate: float) -> None:
+        self._c = circumstances
+        self._rate = false_alarm_rate
+        self._limit = NormalDist().inv_cdf(1 - false_alarm_rate / 2)
+        self._tracker = ArrivalTracker(circumstances)
+        self._plane = -1
+        self._fit = self._new_fit(20.0)
+        self._largest = 0.0
+        self._first = 0
+        self._warmth: float | None = None
+        self._run: list[float] = []
+        self._shift_s = 0.0
+        self._offset = Standing()
+        self._step = Standing()
+        self._step_from = 0
+
+    def _new_fit(self, temperature_c: float) -> PivotFit:
+        return PivotFit(speed_of_sound(temperature_c), self._c.distance_m, self._c.planned_points)
+
+    def update(self, seen: Observation) -> Iterable[Change]:
+        """One more point."""
+        arrival = self._tracker.update(seen)
+        if seen.plane != self._plane:
+            self._plane, self._first = seen.plane, seen.index
+            self._fit, self._largest, self._run, self._shift_s = self._new_fit(seen.temperature_c), 0.0, [], 0.0
+        if not arrival.usable:
+            return []
+        time = self._at_first_temperature(arrival, seen) - self._shift_s
+        theta = seen.commanded.theta
+        estimate = self._fit.estimate()
+        changes = []
+        if estimate is not None and self._jumps(estimate, theta, time, seen.index):
+            changes = self._jump(seen.index)
+            if self._run:
+                return changes  # not yet known whether it stays: it must not pull the fit
+            time = self._at_first_temperature(arrival, seen) - self._shift_s
+        self._fit.add(theta, time, arrival.standard_uncertainty_s, seen.index)
+        self._largest = max(self._largest, abs(theta))
+        return [*changes, *self._offset.now(self._finding(seen.index), seen.index)]
+
+    def finish(self) -> Iterable[Change]:
+        """Nothing more to say."""
+        return []
+
+    def _at_first_temperature(self, arrival: Arrival, seen: Observation) -> float:
+        """Arrival as it would be at the temperature of the first point."""
+        if self._warmth is None:
+            self._warmth = seen.temperature_c
+        z = self._c.distance_m
+        return arrival.time_s - z / speed_of_sound(seen.temperature_c) + z / speed_of_sound(self._warmth)
+
+    # --- the offset -------------------------------------------------------------------------------------
+
+    def _finding(self, at: int) -> Finding | None:
+        fit = self._fit.estimate()
+        if fit is None or fit.points < FEWEST:
+            return None
+        freedom = fit.points - 4
+        statistic = float(np.array([fit.x_m, fit.z_m]) @ np.linalg.solve(fit.covariance, [fit.x_m, fit.z_m]))
+        threshold = freedom * (self._rate ** (-2 / freedom) - 1)
+        level, turned = self._consequence(fit)
+        if statistic <= threshold or (level < LEVEL_MATTERS_DB and turned < ANGLE_MATTERS):
+            return None
+        return self._say(fit, level, turned, at)
+
+    def _consequence(self, fit: PivotEstimate) -> tuple[float, float]:
+        """Level error in dB at the highest wanted frequency and the largest angle, and angle error in rad."""
+        c = self._c
+        swing = max(abs(fit.x_m * (cos(t) - 1) + fit.z_m * sin(t)) for t in (self._largest, -self._largest))
+        k = 2 * pi * c.highest_wanted_hz / self._fit.speed_m_s
+        half_width = X_6DB * c.distance_m / (k * c.source_radius_m)
+        return 6.0 * (swing / half_width) ** 2, swing / c.distance_m
+
+    def _say(self, fit: PivotEstimate, level_db: float, turned: float, at: int) -> Finding:
+        c = self._c
+        ux, uz = sqrt(fit.covariance[0, 0]), sqrt(fit.covariance[1, 1])
+        x, z = c.pivot_x_m + fit.x_m, c.pivot_z_m + fit.z_m
+        left = " left after the correction" if (c.pivot_x_m or c.pivot_z_m) else ""
+        severity: Severity = "caution"
+        return Finding(
+            code="pivot.offset",
+            severity=severity,
+            summary=f"the element centre is {hypot(fit.x_m, fit.z_m) * 1e3:.3f} mm from the axis of rotation{left}: "
+            f"x = {mm(fit.x_m, ux)}, z = {mm(fit.z_m, uz)}",
+            sizes=(Size("x", fit.x_m, ux, "m"), Size("z", fit.z_m, uz, "m")),
+            points=(self._first, at, fit.points),
+            consequence=f"at {degrees(self._largest):.0f}° the response at {mhz(c.highest_wanted_hz)} reads up to "
+            f"{decibel(level_db)} low, and the element sees the source {degrees(turned):.2g}° off",
+            remedy=f"apply the pivot correction x_mm = {x * 1e3:.3f}, z_mm = {z * 1e3:.3f}, or move the sensor in its "
+            f"holder by {-fit.x_m * 1e3:+.3f} mm along x and {-fit.z_m * 1e3:+.3f} mm along z",
+        )
+
+    # --- a jump -----------------------------------------------------------------------------------------
+
+    def _jumps(self, fit: PivotEstimate, theta: float, time: float, order: int) -> bool:
+        if fit.points < SETTLED:
+            return False
+        row = self._fit.row(theta, order)
+        predicted = fit.arrival_s + float(fit.arrival_at(np.array(theta), self._fit.speed_m_s))
+        innovation = time - predicted - fit.drift_s * row[3]
+        far = abs(innovation) > self._limit * max(fit.residual_sd_s, 1e-11) * sqrt(1 + 8 / fit.points)
+        if not far or abs(innovation) * self._fit.speed_m_s < STEP_MATTERS_M:
+            self._run = []
+            return False
+        if self._run and self._run[-1] * innovation < 0:
+            self._run = []
+        self._run.append(innovation)
+        return True
+
+    def _jump(self, at: int) -> list[Change]:
+        """After several points to one side the step is believed, said, and taken out of what follows."""
+        if len(self._run) == 1:
+            self._step_from = at
+        if len(self._run) < STEP_POINTS:
+            return []
+        size_s = sum(self._run) / len(self._run)
+        spread = float(np.std(self._run)) / sqrt(len(self._run)) + 1e-11
+        self._shift_s += size_s
+        self._run = []
+        c = self._fit.speed_m_s
+        finding = Finding(
+            code="arrival.step",
+            severity="caution",
+            summary=f"the arrival jumped by {size_s * 1e9:+.1f} ns, as if the element had moved "
+            f"{mm(size_s * c, spread * c)} along the beam",
+            sizes=(Size("step", size_s * c, spread * c, "m"),),
+            points=(self._step_from, at, STEP_POINTS),
+            consequence="points before and after the jump were not taken at the same place",
+            remedy="look for lost steps or a sensor that slipped in its holder; home the stage and repeat from point "
+            f"{self._step_from}",
+        )
+        return self._step.now(finding, at)
