@@ -61,7 +61,7 @@ class Bank:
     def read(cls, path: Path) -> Bank:
         """Raises BankError: no such file, no such arrays, or shapes that do not fit each other."""
         try:
-            with np.load(path, allow_pickle=False) as stored:
+            with path.open("rb") as file, np.load(file, allow_pickle=False) as stored:
                 arrays = {f.name: stored[f.name] for f in fields(cls) if f.name in stored}
         except (OSError, ValueError, zipfile.BadZipFile, EOFError) as exc:
             raise BankError(f"{path}: cannot be read as a bank: {exc}") from exc

@@ -185,7 +185,8 @@ class ScpiSession:
             program = self._instrument.known_program(data)
             if program is not None:
                 self._instrument.catch_up()
-                return self._run(program, [])
+                out = self._run(program, [])
+                return out if self._waiting is None else self._drain()
         self._buffer += data
         return self._drain()
 

@@ -46,9 +46,10 @@ class PrefixStage:
         self._timeline = timeline
         self._limits = dict(motion.limits)
         self._errors: deque[int] = deque(maxlen=ERRORS_KEPT)
+        self._read: dict[Axis, float] | None = None  # all axes of a line are read at one time
         self._queries: dict[str, Callable[[Axis], str]] = {
             "PA": lambda a: f"{motion.target(a) / _unit(a):.4f}",
-            "TP": lambda a: f"{motion.reported()[a] / _unit(a):.4f}",
+            "TP": lambda a: f"{self._reading()[a] / _unit(a):.4f}",
             "MD": lambda a: f"{not motion.moving((a,)):d}",
             "TS": lambda a: f"{motion.moving((a,)):d}",
             "OR": lambda a: f"{a in motion.homed:d}",
@@ -61,6 +62,7 @@ class PrefixStage:
         replies: list[str] = []
         moves: dict[Axis, float] = {}
         refused = False
+        self._read = None
         for unit in filter(None, (part.strip().upper() for part in text.split(";"))):
             try:
                 prefix, command, argument = self._parse(unit)
@@ -74,6 +76,11 @@ class PrefixStage:
                 self._errors.append(error.number)
         self._start(moves, refused)
         return replies
+
+    def _reading(self) -> dict[Axis, float]:
+        if self._read is None:
+            self._read = self._motion.reported()
+        return self._read
 
     def _parse(self, unit: str) -> tuple[str, str, str]:
         match = _UNIT.fullmatch(unit)

@@ -6,12 +6,14 @@ import json
 import os
 import subprocess
 import sys
+import tomllib
 from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import IO, Any
 
+from profiles.bench import Bench
 from profiles.instrument import ACTIONS, Family, Role
 
 ROLE: dict[str, tuple[Role, Family]] = {
@@ -93,6 +95,13 @@ name = "source"
 low_mm = [-20.0, -20.0, -5.0]
 high_mm = [20.0, 20.0, 5.0]
 {simulation}"""
+
+
+def a_bench() -> Bench:
+    """With shipped instruments."""
+    text = bench_toml("scope-preamble-16", "stage-iso", simulation="")
+    text = text.replace("test-generator", "generator-burst").replace("test-thermometer", "thermometer-scpi")
+    return Bench.model_validate(tomllib.loads(text))
 
 
 @dataclass
