@@ -57,7 +57,7 @@ def write_instruments(folder: Path) -> None:
 def bench_toml(
     scope: str = "test-scope-p",
     stage: str = "test-stage-iso",
-    stage_address: str = "tcp://127.0.0.1:5003",
+    stage_address: str = "tcp://127.0.0.3:0",
     simulation: str = SIMULATION,
 ) -> str:
     return f"""
@@ -66,16 +66,16 @@ kind = "bench"
 name = "test-bench"
 [instruments.oscilloscope]
 profile = "{scope}"
-address = "tcp://127.0.0.1:5001"
+address = "tcp://127.0.0.1:0"
 [instruments.generator]
 profile = "test-generator"
-address = "tcp://127.0.0.1:5002"
+address = "tcp://127.0.0.2:0"
 [instruments.stage]
 profile = "{stage}"
 address = "{stage_address}"
 [instruments.thermometer]
 profile = "test-thermometer"
-address = "tcp://127.0.0.1:5004"
+address = "tcp://127.0.0.4:0"
 [axes.x]
 low_mm = -50.0
 high_mm = 50.0
@@ -140,14 +140,12 @@ def running(tmp_path: Path, text: str, options: Sequence[str] = ("--speed", "max
     """A simulator with free ports; ended at the end."""
     folder, bench = folder_with(tmp_path, text)
     words, environment = command(folder, bench, "--free-ports", *options)
-    process = subprocess.Popen(words, env=environment, stdin=subprocess.PIPE, stdout=subprocess.PIPE, text=True)
-    try:
-        assert process.stdout is not None
-        line = process.stdout.readline()
-        ready: dict[str, Any] = json.loads(line)
-        assert ready["ready"] is True
-        yield Simulator(process, ready["addresses"], process.stdin)
-    finally:
-        if process.poll() is None:
-            process.kill()
-        process.communicate()
+    with subprocess.Popen(words, env=environment, stdin=subprocess.PIPE, stdout=subprocess.PIPE, text=True) as process:
+        try:
+            assert process.stdout is not None
+            ready: dict[str, Any] = json.loads(process.stdout.readline())
+            assert ready["ready"] is True
+            yield Simulator(process, ready["addresses"], process.stdin)
+        finally:
+            if process.poll() is None:
+                process.kill()
