@@ -19,7 +19,9 @@ from sim_hardware.motion import AxisLimits, Motion
 from sim_hardware.scpi_errors import ScpiError
 
 Floats = NDArray[np.float64]
-STEP = np.array([(MM if a in LINEAR_AXES else DEG) * 1e-4 for a in AXES])  # last decimal of a stage's words
+Pose = list[float]
+Key = tuple[int, ...]
+STEP = [(MM if a in LINEAR_AXES else DEG) * 1e-4 for a in AXES]  # last decimal of a stage's words
 
 
 class BankError(ValueError):
@@ -87,42 +89,42 @@ class Bank:
         return cls(**arrays)
 
 
+def _key(pose: Pose) -> Key:
+    return tuple(round(value / step) for value, step in zip(pose, STEP, strict=True))
+
+
 class Replay:
     """What of a bank has been served, and what comes next."""
 
     def __init__(self, bank: Bank) -> None:
         self.bank = bank
         self.strict = bool(bank.strict)
-        self._left: dict[tuple[int, ...], deque[int]] = {}
+        self._left: dict[Key, deque[int]] = {}
         for index, pose in enumerate(bank.carriage):
-            self._left.setdefault(self._key(pose), deque()).append(index)
+            self._left.setdefault(_key(pose.tolist()), deque()).append(index)
         self._served = 0
-        self._pose: tuple[int, ...] | None = None
+        self._pose: Key | None = None
         self._shown: int | None = None  # the point whose reports and temperature are answered now
         self._captured = False
 
-    @staticmethod
-    def _key(pose: Floats) -> tuple[int, ...]:
-        return tuple(int(v) for v in np.rint(pose / STEP))
-
-    def _find(self, pose: Floats) -> tuple[int, ...] | None:
-        key = self._key(pose)
+    def _find(self, pose: Pose) -> Key | None:
+        key = _key(pose)
         if key in self._left:
             return key
         # a value half-way between two decimals may have been rounded the other way
-        off = np.abs(self.bank.carriage - pose).max(axis=1, where=np.ones(5, bool), initial=0.0)
-        near = int(off.argmin())
-        if np.all(np.abs(self.bank.carriage[near] - pose) <= 1.01 * STEP):
-            return self._key(self.bank.carriage[near])
-        return None
+        off = np.abs(self.bank.carriage - pose) / STEP
+        near = int(off.max(axis=1).argmin())
+        return _key(self.bank.carriage[near].tolist()) if off[near].max() <= 1.01 else None
 
-    def knows(self, pose: Floats) -> bool:
+    def knows(self, pose: Pose) -> bool:
         """Something measured at this pose is left to be served."""
         key = self._find(pose)
         return key is not None and bool(self._left[key])
 
-    def go(self, pose: Floats) -> None:
+    def go(self, pose: Pose) -> None:
         """The stage is told to go there."""
+        if not self.strict:
+            return
         self._pose = self._find(pose)
         left = self._left.get(self._pose) if self._pose is not None else None
         self._shown, self._captured = (left[0] if left else None), False
@@ -253,6 +255,6 @@ class BankMotion(Motion):
             return super().reported()
         return {a: float(v) for a, v in zip(AXES, stored, strict=True) if a in self.limits}
 
-    def _pose(self, targets: Mapping[Axis, float]) -> Floats:
+    def _pose(self, targets: Mapping[Axis, float]) -> Pose:
         """All five coordinates; axes not named stay where they are told to be."""
-        return np.array([targets[a] if a in targets else self.target(a) for a in AXES])
+        return [targets[a] if a in targets else self.target(a) for a in AXES]

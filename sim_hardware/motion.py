@@ -7,9 +7,10 @@ What the controller counts and what is true differ by backlash, lost steps, ring
 from __future__ import annotations
 
 from collections.abc import Iterable, Mapping
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from functools import partial
 from math import cos, exp, log, pi, sqrt
+from typing import NamedTuple
 
 import numpy as np
 
@@ -58,8 +59,7 @@ def axis_limits(axes: AxisTable) -> dict[Axis, AxisLimits]:
     return limits
 
 
-@dataclass(frozen=True)
-class Move:
+class Move(NamedTuple):
     """One move of one axis: commanded position `start + scale * law.travelled(t - t0)`."""
 
     t0: float
@@ -228,11 +228,10 @@ class Motion:
     def _append(self, axis: Axis, start_s: float, delta: float, law: Law) -> None:
         last = self._tracks[axis][-1]
         number = last.number + 1
-        slip = last.slip + sum(
-            (lost.size_mm or 0.0) * MM + (lost.size_deg or 0.0) * DEG
-            for lost in self._mechanics.lost_steps
-            if lost.axis == axis and lost.onset_move == number
-        )
+        slip = last.slip
+        for lost in self._mechanics.lost_steps:
+            if lost.axis == axis and lost.onset_move == number:
+                slip += (lost.size_mm or 0.0) * MM + (lost.size_deg or 0.0) * DEG
         play = last.driven(last.end_s, self._backlash[axis])
         self._keep(axis, Move(start_s, self.target(axis), delta, law, play, slip, number))
 
@@ -240,7 +239,7 @@ class Motion:
         """From where it is at `t`, go on by another law; no new move."""
         last = self._tracks[axis][-1]
         play = last.driven(t, self._backlash[axis])
-        self._keep(axis, replace(last, t0=t, start=last.commanded(t), scale=scale, law=law, play=play))
+        self._keep(axis, last._replace(t0=t, start=last.commanded(t), scale=scale, law=law, play=play))
 
     def _keep(self, axis: Axis, move: Move) -> None:
         track = self._tracks[axis]
@@ -279,11 +278,7 @@ class Motion:
         since = t - move.end_s
         if amplitude == 0.0 or move.scale == 0.0 or not 0.0 <= since < 30 * self._tau:
             return 0.0
-        return (
-            (amplitude if move.scale > 0 else -amplitude)
-            * exp(-since / self._tau)
-            * cos(2 * pi * since / self._tau)
-        )
+        return (amplitude if move.scale > 0 else -amplitude) * exp(-since / self._tau) * cos(2 * pi * since / self._tau)
 
     def _readback_error(self, axis: Axis) -> float:
         sigma = self._sigma[axis]
