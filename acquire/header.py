@@ -8,6 +8,7 @@ from collections.abc import Mapping
 from dataclasses import asdict, dataclass, field, fields
 from datetime import UTC, datetime
 from importlib.metadata import PackageNotFoundError, version
+from pathlib import Path
 from typing import Any
 
 import numpy as np
@@ -24,6 +25,24 @@ def program_version() -> str:
         return version("truepivot")
     except PackageNotFoundError:
         return "unknown"
+
+
+def read_attributes(store: Path) -> dict[str, Any]:
+    """Attributes of a store, read without anything that takes long to import.
+
+    Raises:
+        ValueError: there is no store of this program at that place; one line.
+    """
+    try:
+        attributes = json.loads((store / "zarr.json").read_text("utf-8"))["attributes"]
+    except (OSError, ValueError, KeyError) as error:
+        raise ValueError(f"{store} is no store of a scan") from error
+    if attributes.get("format") != STORE_FORMAT:
+        raise ValueError(f"{store} is no store of a scan")
+    if attributes["format_version"] > STORE_VERSION:
+        raise ValueError(f"{store} was written by a newer version: install that to read it")
+    found: dict[str, Any] = attributes
+    return found
 
 
 def checksum(profile: Mapping[str, Any]) -> str:

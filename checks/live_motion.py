@@ -59,7 +59,7 @@ class MotionCheck:
             sizes=t.sizes(self._linear, self._angular),
             points=t.points(),
             consequence="these points do not stand at the pose under which they are stored as commanded",
-            remedy="look for an obstacle, a slipping axis or too small a settling time; the reported pose is stored too",
+            remedy="look for an obstacle, a slipping axis or too short a settling time; the reported pose is stored",
         )
 
     def _not_still(self) -> Finding:

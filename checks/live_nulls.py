@@ -123,7 +123,7 @@ class SpectrumCheck:
             sizes=(Size("ripple", amplitude, amplitude / 10, "dB"),),
             points=(0, at, self._count),
             consequence=f"an echo of about {level:.0f} dB interferes, and differently at every angle",
-            remedy="find the reflector, lengthen the way around it, or shorten the burst so that the gate ends before it",
+            remedy="find the reflector, lengthen the way around it, or shorten burst and gate",
         )
 
 

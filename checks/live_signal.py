@@ -102,13 +102,13 @@ class SignalCheck:
         if self._count == 1:
             self._usable = level >= USABLE_DB
         self._usable = np.where(level >= USABLE_DB + 3, True, np.where(level < USABLE_DB - 3, False, self._usable))
-        return self._standing.now(self._finding(level, seen.index), seen.index)
+        return self._standing.now(self._finding(seen.index), seen.index)
 
     def finish(self) -> Iterable[Change]:
         """Nothing more to say."""
         return []
 
-    def _finding(self, level: np.ndarray, at: int) -> Finding | None:  # type: ignore[type-arg]
+    def _finding(self, at: int) -> Finding | None:
         bad = ~self._usable
         if not bad.any():
             return None

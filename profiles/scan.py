@@ -27,6 +27,9 @@ class Capture(Model):
     sample_rate_mhz: Positive
     points: Annotated[int, Field(ge=64, le=10_000_000)]
     lead_us: NonNegative = Field(default=4.0, description="recorded before the expected arrival")
+    start_us: NonNegative | None = Field(
+        default=None, description="start of the record after the trigger; left out: lead_us before the expected arrival"
+    )
     full_scale_v: Positive | None = Field(
         default=None, description="left out: found by autorange at the first point"
     )

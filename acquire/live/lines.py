@@ -11,11 +11,13 @@ from acquire.messages import Event, FindingChanged, Notice, Progress, ScanStarte
 PROGRESS_STEP = 0.1
 
 
-def told(events: Iterable[Event]) -> Iterator[str]:
+def told(events: Iterable[Event | None]) -> Iterator[str]:
     """Lines for each thing worth saying, until the scan has ended; progress about every tenth."""
     state = ViewState()
     said = 0.0
     for event in events:
+        if event is None:
+            continue
         state.take(event)
         match event:
             case ScanStarted():

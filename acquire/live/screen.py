@@ -37,13 +37,14 @@ def whole(state: ViewState, width: int, height: int) -> RenderableType:
     return layout
 
 
-def show(events: Iterable[Event], console: Console) -> ViewState:
+def show(events: Iterable[Event | None], console: Console) -> ViewState:
     """Draw until the scan has ended; returns what was seen. A wait without events is fine."""
     state = ViewState()
     drawn = 0.0
     with Live(console=console, screen=True, auto_refresh=False) as live:
         for event in events:
-            state.take(event)
+            if event is not None:
+                state.take(event)
             now = monotonic()
             if now - drawn >= REDRAW_S or state.ended:
                 live.update(whole(state, console.width, console.height), refresh=True)

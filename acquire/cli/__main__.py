@@ -1,0 +1,5 @@
+"""`python -m acquire.cli`."""
+
+from acquire.cli.app import main
+
+main()

@@ -1,0 +1,135 @@
+"""A client of the daemon: asks, and follows its events without missing one."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from types import TracebackType
+from typing import Self
+
+import msgspec
+import zmq
+
+from acquire.endpoint import events_endpoint
+from acquire.messages import (
+    Done,
+    Event,
+    EventEnvelope,
+    Events,
+    GetEvents,
+    GetStatus,
+    Refused,
+    Reply,
+    ReplyEnvelope,
+    Request,
+    RequestEnvelope,
+    Status,
+)
+
+REPLY_S = 5.0
+LOOK_MS = 500
+
+encode = msgspec.msgpack.Encoder().encode
+decode_reply = msgspec.msgpack.Decoder(ReplyEnvelope).decode
+decode_event = msgspec.msgpack.Decoder(EventEnvelope).decode
+
+
+class DaemonSilent(Exception):
+    """No daemon answers; one line with the cure."""
+
+
+class RequestRefused(Exception):
+    """The daemon refused; one line or more, with the cure."""
+
+
+class Client:
+    """A connection; use it as a context manager."""
+
+    def __init__(self, endpoint: str) -> None:
+        self.endpoint = endpoint
+        self._context = zmq.Context()
+        self._requests = self._socket(zmq.DEALER, endpoint)
+        self._events = self._socket(zmq.SUB, events_endpoint(endpoint))
+        self._events.setsockopt(zmq.SUBSCRIBE, b"")
+        self._next: int | None = None
+
+    def _socket(self, kind: int, endpoint: str) -> zmq.Socket[bytes]:
+        socket = self._context.socket(kind)
+        socket.linger = 0
+        socket.connect(endpoint)
+        return socket
+
+    def __enter__(self) -> Self:
+        return self
+
+    def __exit__(self, kind: type[BaseException] | None, error: BaseException | None, at: TracebackType | None) -> None:
+        self.close()
+
+    def close(self) -> None:
+        """Let go of the sockets."""
+        self._requests.close()
+        self._events.close()
+        self._context.term()
+
+    def ask(self, request: Request, timeout_s: float = REPLY_S) -> Reply:
+        """Send a request, return the reply.
+
+        Raises:
+            DaemonSilent: nobody answers.
+            RequestRefused: the daemon refused.
+        """
+        self._requests.send_multipart([b"", encode(RequestEnvelope(body=request))])
+        if not self._requests.poll(int(timeout_s * 1e3)):
+            raise DaemonSilent(f"no daemon answers at {self.endpoint}; start one with: truepivot serve BENCH")
+        reply = decode_reply(self._requests.recv_multipart()[-1]).body
+        if isinstance(reply, Refused):
+            raise RequestRefused(reply.text)
+        return reply
+
+    def do(self, request: Request) -> str:
+        """Ask for something that is simply done; returns what the daemon says."""
+        reply = self.ask(request)
+        return reply.text if isinstance(reply, Done) else ""
+
+    def status(self) -> Status:
+        """How things stand."""
+        reply = self.ask(GetStatus())
+        if not isinstance(reply, Status):
+            raise DaemonSilent(f"what answers at {self.endpoint} is no daemon of this version")
+        return reply
+
+    def follow_from(self, number: int) -> None:
+        """Let `events` begin with that number, also where it was sent before this client came."""
+        self._next = number
+
+    def events(self) -> Iterator[Event | None]:
+        """Events in order without gaps; None now and then while nothing comes, so that the caller may look around.
+
+        Raises:
+            DaemonSilent: the daemon is gone.
+        """
+        if self._next is None:
+            self._next = self.status().last_event + 1
+        yield from self._missed()
+        while True:
+            if not self._events.poll(LOOK_MS):
+                if self.status().last_event >= self._next:
+                    yield from self._missed()
+                yield None
+                continue
+            envelope = decode_event(self._events.recv())
+            if envelope.number > self._next:
+                yield from self._missed()
+            if envelope.number == self._next:
+                self._next += 1
+                yield envelope.body
+
+    def _missed(self) -> Iterator[Event]:
+        """What was sent since the last event that was seen; what the daemon no longer keeps is skipped."""
+        while True:
+            reply = self.ask(GetEvents(since=self._next or 1))
+            if not isinstance(reply, Events) or not reply.events:
+                return
+            for envelope in reply.events:
+                if envelope.number >= (self._next or 1):
+                    self._next = envelope.number + 1
+                    yield envelope.body

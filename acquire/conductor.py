@@ -1,0 +1,367 @@
+"""One scan from plan to store. The thread that runs it owns every link of the bench while it runs.
+
+For each point: arrive and stand still, capture, read the position again; then the stage starts for the next point
+while the waveform of this one is transferred and handed to the recorder, which stores and judges it beside.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+from math import inf
+from pathlib import Path
+from time import monotonic, sleep
+from typing import Any
+
+from acquire.control import Control
+from acquire.header import StoreHeader, circumstances_from_mapping, read_attributes
+from acquire.messages import (
+    Event,
+    FindingChanged,
+    Notice,
+    Progress,
+    ScanStarted,
+    ScanState,
+    StateChanged,
+)
+from acquire.plan import AXIS_NUMBER, Plan, PlanPoint
+from acquire.pose import Pivot
+from acquire.prepare import Job, circumstances_of, first_settings, plan_of, resolved
+from acquire.record import Five, PointRecord
+from acquire.recorder import Recorder
+from drivers.autorange import autorange
+from drivers.bench import BenchInstruments
+from drivers.errors import Cancelled, DriverError, LinkError
+from drivers.roles import CaptureSettings
+from drivers.trace import Trace
+from profiles.model import AXES, LINEAR_AXES, Axis
+from profiles.units import DEG, MM, MS, US
+
+HOMING_S = 300.0
+MOVE_S = 120.0
+SLACK_S = 3.0  # beyond the time that the triggers of a capture take
+TEMPERATURE_EVERY_S = 2.0
+PROGRESS_EVERY_S = 0.2
+RECONNECTS = 3
+HOLD_LOOKS_S = 0.05
+
+Publish = Callable[[Event], None]
+
+
+class Stopped(Exception):
+    """The operator broke the scan off."""
+
+
+@dataclass(frozen=True)
+class Where:
+    """A reported position, of the carriage and of the element centre."""
+
+    carriage: Five
+    element: Five
+
+
+class Conductor:
+    """Runs one scan; `publish` must not block."""
+
+    def __init__(
+        self, job: Job, instruments: BenchInstruments, control: Control, publish: Publish, store: Path
+    ) -> None:
+        self._job = job
+        self._i = instruments
+        self._control = control
+        self._publish = publish
+        self._store = store
+        self._pivot: Pivot = job.pivot
+        self._temperature_c = job.bench.water.temperature_c
+        self._asked_at = -inf
+        self._answer_due = False
+        self._source_on = False
+        self._reconnects = 0
+        self.done = 0
+        self.planned = 0
+
+    @property
+    def source_on(self) -> bool:
+        """As last switched."""
+        return self._source_on
+
+    def run(self, continue_store: bool = False) -> bool:
+        """The whole scan; True when it was sealed, False when the operator broke it off.
+
+        Raises:
+            PlanRefused, MeasurementError: the scan cannot be done here; nothing moved.
+            DriverError: an instrument failed for good; what was stored stays.
+            RecorderFailed: storing failed.
+        """
+        self._state("preparing")
+        try:
+            return self._prepared_run(continue_store)
+        finally:
+            self._switch_source(False)
+
+    # --- before the first point -------------------------------------------------------------------------
+
+    def _prepared_run(self, continue_store: bool) -> bool:
+        self._read_temperature()
+        stored = read_attributes(self._store) if continue_store else None
+        self._job = resolved(self._job, self._temperature_c)
+        plan = plan_of(self._job, self._temperature_c)
+        self.planned = len(plan)
+        scope = self._i.scope
+        wanted = first_settings(self._job, plan, self._temperature_c, scope.full_scales_v()[-1])
+        interval_s = 1 / scope.configure(wanted).sample_rate_hz
+        # asked once before anything moves, so that a burst that does not fit is refused in time
+        circumstances_of(self._job, plan, self._temperature_c, interval_s, wanted.start_s)
+        self._go_to_reference(plan)
+        self._i.generator.configure(self._job.drive())
+        settings = self._choose_range(wanted)
+        trace = self._capture(settings)
+        scaling = trace.scaling
+        if stored is not None:
+            exact = circumstances_from_mapping(stored["circumstances"])
+        else:
+            exact = circumstances_of(self._job, plan, self._temperature_c, scaling.interval_s, scaling.start_s)
+        self._publish(self._started(plan, exact.frequencies_hz.tolist()))
+        dtype, samples = trace.counts.dtype.name, trace.counts.size
+        header = self._header(settings)
+        with Recorder(self._store, header, exact, dtype, samples, len(plan), continue_store) as recorder:
+            self.done = recorder.already_stored
+            return self._visit(plan.points[self.done :], recorder, settings)
+
+    def _header(self, settings: CaptureSettings) -> StoreHeader:
+        """The profiles with range and start as they were used, so that the scan can be run again as it was."""
+        capture = {"full_scale_v": settings.full_scale_v, "start_us": settings.start_s / US}
+        scan = self._job.scan.model_dump(mode="json")
+        scan["capture"] |= capture
+        others = {k: getattr(self._job, k).model_dump(mode="json") for k in ("bench", "sensor", "source")}
+        return StoreHeader(scan=scan, **others)
+
+    def _started(self, plan: Plan, frequencies_hz: list[float]) -> ScanStarted:
+        return ScanStarted(
+            name=self._job.scan.name,
+            scan_type=plan.scan_type,
+            store=str(self._store),
+            planned_points=len(plan),
+            frequencies_hz=frequencies_hz,
+            axes_shown=list(plan.moving),
+            sensor=self._job.sensor.name,
+            source=self._job.source.name,
+        )
+
+    def _go_to_reference(self, plan: Plan) -> None:
+        stage = self._i.stage
+        if not stage.referenced():
+            self._publish(Notice(text="homing the stage: its position is not known"))
+            stage.home(HOMING_S, self._control.stop_asked)
+        self._start(plan.points[0])
+        self._arrive(plan.points[0])
+
+    def _choose_range(self, wanted: CaptureSettings) -> CaptureSettings:
+        """The range of the scan, or the one that the first point asks for."""
+        scope = self._i.scope
+        if self._job.scan.capture.full_scale_v is not None:
+            return scope.configure(wanted)
+        chosen = autorange(wanted, scope.full_scales_v(), self._capture)
+        self._publish(Notice(text=f"vertical range {chosen.full_scale_v:g} V, found at the first point"))
+        return scope.configure(chosen)
+
+    def _capture(self, settings: CaptureSettings) -> Trace:
+        self._i.scope.configure(settings)
+        self._switch_source(True)
+        self._i.scope.arm()
+        self._i.scope.wait(self._capture_timeout_s(), self._control.stop_asked)
+        return self._i.scope.read()
+
+    # --- the points -------------------------------------------------------------------------------------
+
+    def _visit(self, points: tuple[PlanPoint, ...], recorder: Recorder, settings: CaptureSettings) -> bool:
+        started = told = monotonic()
+        first = self.done
+        self._state("running")
+        try:
+            for at, point in enumerate(points):
+                self._between(recorder)
+                following = points[at + 1] if at + 1 < len(points) else None
+                record, trace = self._point_with_repair(point, following, started)
+                if trace.full_scale_v != settings.full_scale_v:
+                    raise DriverError("the vertical range changed during the scan: leave the panel alone")
+                recorder.put(record, trace.counts)
+                self.done += 1
+                self._pass_on(recorder.poll())
+                if monotonic() - told >= PROGRESS_EVERY_S:
+                    told = monotonic()
+                    self._progress(started, first)
+            self._between(recorder)
+        except (Stopped, Cancelled):
+            self._state("stopping", self._control.reason)
+            self._i.stage.stop()
+            self._switch_source(False)
+            self._pass_on(recorder.finish(sealed=False))
+            return False
+        self._switch_source(False)
+        self._pass_on(recorder.finish(sealed=True))
+        self._progress(started, first)
+        return True
+
+    def _point_with_repair(
+        self, point: PlanPoint, following: PlanPoint | None, started: float
+    ) -> tuple[PointRecord, Trace]:
+        """One point; a link that failed is made anew and the point taken again, a few times in a scan."""
+        while True:
+            try:
+                return self._point(point, following, started)
+            except LinkError as error:
+                self._reconnects += 1
+                if self._reconnects > RECONNECTS:
+                    raise
+                self._publish(Notice(text=f"{error}; reconnecting, try {self._reconnects} of {RECONNECTS}"))
+                self._repair()
+                self._start(point)
+
+    def _point(self, point: PlanPoint, following: PlanPoint | None, started: float) -> tuple[PointRecord, Trace]:
+        before = self._arrive(point)
+        if self._job.scan.capture.dwell_ms:
+            sleep(self._job.scan.capture.dwell_ms * MS)
+        scope = self._i.scope
+        scope.arm()
+        scope.wait(self._capture_timeout_s(), self._control.stop_asked)
+        captured = monotonic()
+        after = self._where(self._i.stage.position())
+        self._look_after_temperature(captured)
+        if following is not None:
+            self._start(following)
+        trace = scope.read()
+        return self._record(point, before, after, captured - started, trace), trace
+
+    def _record(self, point: PlanPoint, before: Where, after: Where, time_s: float, trace: Trace) -> PointRecord:
+        s = trace.scaling
+        return PointRecord(
+            index=point.index,
+            plan_index=point.index,
+            reference=point.reference,
+            plane=point.plane,
+            commanded=point.pose,
+            before=before.element,
+            after=after.element,
+            carriage_commanded=self._pivot.carriage_for(point.pose),
+            carriage_before=before.carriage,
+            carriage_after=after.carriage,
+            time_s=time_s,
+            temperature_c=self._temperature_c,
+            volts_per_count=s.volts_per_count,
+            volts_at_zero=s.volts_at_zero,
+            interval_s=s.interval_s,
+            start_s=s.start_s,
+            lowest=trace.lowest,
+            highest=trace.highest,
+            averages=trace.averages,
+            full_scale_v=trace.full_scale_v,
+        )
+
+    # --- moving -----------------------------------------------------------------------------------------
+
+    def _target(self, point: PlanPoint) -> dict[Axis, float]:
+        carriage = self._pivot.carriage_for(point.pose)
+        return {axis: carriage[AXIS_NUMBER[axis]] for axis in self._i.stage.axes}
+
+    def _start(self, point: PlanPoint) -> None:
+        """Send the stage off; where there is backlash to take up, first to a place below the target."""
+        target = self._target(point)
+        self._i.stage.start_move(self._approach(target) or target)
+
+    def _arrive(self, point: PlanPoint) -> Where:
+        stage, target = self._i.stage, self._target(point)
+        position = stage.finish_move(MOVE_S, self._control.stop_asked)
+        if self._approach(target):
+            stage.start_move(target)
+            position = stage.finish_move(MOVE_S, self._control.stop_asked)
+        return self._where(position)
+
+    def _approach(self, target: dict[Axis, float]) -> dict[Axis, float] | None:
+        """Where to come from so that every axis with backlash arrives upwards; None when there is no such axis."""
+        low = dict(target)
+        for axis in target:
+            given: Any = getattr(self._job.bench.axes, axis)
+            linear = axis in LINEAR_AXES
+            play = given.backlash_mm * MM if linear else given.backlash_deg * DEG
+            floor = given.low_mm * MM if linear else given.low_deg * DEG
+            low[axis] = max(target[axis] - play, floor)
+        return low if low != target else None
+
+    def _where(self, position: dict[Axis, float]) -> Where:
+        x, y, z, theta, phi = (position.get(axis, 0.0) for axis in AXES)
+        carriage = (x, y, z, theta, phi)
+        return Where(carriage, self._pivot.element_at(carriage))
+
+    # --- beside the points ------------------------------------------------------------------------------
+
+    def _between(self, recorder: Recorder) -> None:
+        """Stop or hold where the operator asked for it."""
+        if self._control.stop_asked():
+            raise Stopped
+        if not self._control.hold_asked():
+            return
+        self._switch_source(False)
+        self._state("held", self._control.reason)
+        while not self._control.wait_to_go(HOLD_LOOKS_S):
+            self._pass_on(recorder.poll())
+        if self._control.stop_asked():
+            raise Stopped
+        self._switch_source(True)
+        self._state("running")
+
+    def _pass_on(self, events: list[Event]) -> None:
+        """Publish what the recorder says, and hold where the scan's policy asks for it."""
+        for event in events:
+            self._publish(event)
+            if isinstance(event, FindingChanged) and event.action == "raised":
+                severity = event.finding["severity"]
+                if severity in self._job.scan.hold_on:
+                    self._control.ask_hold(f"{severity}: {event.finding['code']}")
+
+    def _progress(self, started: float, first: int) -> None:
+        elapsed = monotonic() - started
+        taken = self.done - first
+        left = elapsed / taken * (self.planned - self.done) if taken else inf
+        self._publish(Progress(done=self.done, planned=self.planned, elapsed_s=elapsed, left_s=left))
+
+    def _state(self, state: ScanState, reason: str = "") -> None:
+        self._publish(StateChanged(state=state, reason=reason))
+
+    def _capture_timeout_s(self) -> float:
+        return self._job.scan.capture.averages / self._job.source.repetition_hz * 2 + SLACK_S
+
+    def _switch_source(self, on: bool) -> None:
+        generator = self._i.generator
+        if self._source_on == on:
+            return
+        if not generator.link.in_step:
+            generator.recover()
+        generator.output(on)
+        self._source_on = on
+
+    def _repair(self) -> None:
+        """Make every link that is out of step anew; the source may have gone off with it."""
+        for instrument in (self._i.generator, self._i.scope, self._i.stage, self._i.thermometer):
+            if instrument is not None and not instrument.link.in_step:
+                instrument.recover()
+        self._answer_due = False
+        self._i.generator.output(True)
+        self._source_on = True
+
+    def _read_temperature(self) -> None:
+        if self._i.thermometer is not None:
+            self._i.thermometer.ask_temperature()
+            self._temperature_c = self._i.thermometer.answer()
+            self._asked_at = monotonic()
+
+    def _look_after_temperature(self, now: float) -> None:
+        """Ask now and then; the answer is fetched a point later, so that a slow thermometer costs nothing."""
+        if self._i.thermometer is None:
+            return
+        if self._answer_due:
+            self._temperature_c = self._i.thermometer.answer()
+            self._answer_due = False
+        elif now - self._asked_at >= TEMPERATURE_EVERY_S:
+            self._i.thermometer.ask_temperature()
+            self._asked_at, self._answer_due = now, True

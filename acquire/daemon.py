@@ -1,0 +1,261 @@
+"""The daemon: listens for requests, numbers events, and hands scans to the thread that owns the instruments."""
+
+from __future__ import annotations
+
+import fcntl
+import signal
+from collections import deque
+from collections.abc import Callable, Iterator
+from contextlib import contextmanager
+from pathlib import Path
+from queue import Empty
+from types import FrameType
+
+import msgspec
+import zmq
+
+from acquire.bench_thread import BenchThread
+from acquire.endpoint import NoEndpoint, checked, events_endpoint
+from acquire.messages import (
+    PROTOCOL_VERSION,
+    Done,
+    Event,
+    EventEnvelope,
+    Events,
+    GetEvents,
+    GetStatus,
+    Hold,
+    Refused,
+    Reply,
+    ReplyEnvelope,
+    Request,
+    RequestEnvelope,
+    Resume,
+    RunScan,
+    Shutdown,
+    Status,
+    Stop,
+)
+from acquire.prepare import Job
+from profiles.bench import Bench
+from profiles.errors import ProfileError
+from profiles.fitting import misfits
+from profiles.load import load_instrument, validate
+from profiles.scan import Scan
+from profiles.sensor import Sensor
+from profiles.source import Source
+
+HISTORY = 50_000
+MOST_EVENTS = 2_000  # in one reply
+QUEUE_MARK = 20_000
+LOOK_MS = 20
+OPENING_S = 30.0
+BUSY = ("preparing", "running", "held", "stopping")
+
+
+class BenchUnusable(Exception):
+    """The bench cannot be opened, or was lost; one line with the cure."""
+
+
+class Daemon:
+    """State of the daemon; `answer` is what a request does, apart from any socket."""
+
+    def __init__(self, bench: Bench, thread: BenchThread) -> None:
+        self._bench = bench
+        self._thread = thread
+        self._history: deque[bytes] = deque(maxlen=HISTORY)
+        self._number = 0
+        self.ended = False
+
+    def numbered(self, event: Event) -> bytes:
+        """The event with the next number, encoded, and kept for clients that missed it."""
+        self._number += 1
+        data = encode(EventEnvelope(number=self._number, body=event))
+        self._history.append(data)
+        return data
+
+    def answer(self, request: Request) -> Reply:
+        """Carry a request out."""
+        control, busy = self._thread.control, self._thread.state in BUSY
+        match request:
+            case RunScan():
+                return self._run(request)
+            case GetStatus():
+                return self._status()
+            case GetEvents():
+                return self._events(request.since)
+            case Shutdown():
+                self.ended = True
+                return Done(text="the daemon ends and leaves the bench safe")
+            case Hold() if busy:
+                control.ask_hold("by the operator")
+                return Done(text="holding after the point in hand; the source is switched off")
+            case Resume() if self._thread.state == "held":
+                control.ask_resume()
+                return Done(text="going on")
+            case Stop() if busy:
+                control.ask_stop("by the operator")
+                return Done(text="stopping; what was stored stays")
+        return Refused(text=f"nothing to {type(request).__name__.lower()}: the daemon is {self._thread.state}")
+
+    def _run(self, request: RunScan) -> Reply:
+        if self._thread.state in BUSY:
+            return Refused(text="a scan is running: wait for it, or stop it with: truepivot stop")
+        try:
+            scan = validate(request.scan, "scan", "scan")
+            sensor = validate(request.sensor, "sensor", "sensor")
+            source = validate(request.source, "source", "source")
+        except ProfileError as error:
+            return Refused(text=str(error))
+        if not (isinstance(scan, Scan) and isinstance(sensor, Sensor) and isinstance(source, Source)):
+            return Refused(text="the profiles are of the wrong kind")
+        problems = misfits(scan, self._bench, sensor, source)
+        if problems:
+            return Refused(text="\n".join(problems))
+        store = Path(request.store)
+        if store.exists() != request.continue_store:
+            told = "does not exist, so it cannot be continued" if request.continue_store else "exists already"
+            return Refused(text=f"{store} {told}: choose another store")
+        self._thread.ask(Job(self._bench, sensor, source, scan), store, request.continue_store)
+        return Done(text=str(store))
+
+    def _status(self) -> Status:
+        done, planned, source_on = self._thread.progress()
+        job, store = self._thread.job, self._thread.store
+        return Status(
+            bench=self._bench.name,
+            state=self._thread.state,
+            scan=job.scan.name if job else None,
+            store=str(store) if store else None,
+            done=done,
+            planned=planned,
+            last_event=self._number,
+            source_on=source_on,
+            identities=self._thread.identities,
+        )
+
+    def _events(self, since: int) -> Events:
+        oldest = self._number - len(self._history) + 1
+        start = max(0, since - oldest)
+        kept = [self._history[i] for i in range(start, min(start + MOST_EVENTS, len(self._history)))]
+        return Events(oldest=oldest, events=[decode_event(data) for data in kept])
+
+
+encode = msgspec.msgpack.Encoder().encode
+decode_request = msgspec.msgpack.Decoder(RequestEnvelope).decode
+decode_event = msgspec.msgpack.Decoder(EventEnvelope).decode
+
+
+def decoded(frame: bytes) -> Request | Refused:
+    """The request in a frame, or why there is none."""
+    try:
+        envelope = decode_request(frame)
+    except msgspec.MsgspecError as error:
+        return Refused(text=f"the request was not understood ({error}): are client and daemon of one version?")
+    if envelope.version != PROTOCOL_VERSION:
+        return Refused(text=f"the client speaks version {envelope.version}, the daemon {PROTOCOL_VERSION}: update")
+    return envelope.body
+
+
+def serve(bench: Bench, endpoint: str, ready: Callable[[dict[str, str]], None]) -> None:
+    """Own the bench until a signal or a `Shutdown`; `ready` is called with the identities once it answers.
+
+    Raises:
+        BenchUnusable: the instruments cannot be opened, or were not left safe.
+        NoEndpoint: the endpoint cannot be used, or another daemon has it.
+    """
+    profiles = {role: load_instrument(attached.profile) for role, attached in bench.instruments.items()}
+    with sole_owner(checked(endpoint)), sockets(endpoint) as (requests, events), ending_signals() as signalled:
+        thread = BenchThread(bench, profiles)
+        daemon = Daemon(bench, thread)
+        thread.start()
+        try:
+            thread.ready.wait(OPENING_S)
+            if thread.failed is None:
+                ready(thread.identities)
+            while not (daemon.ended or signalled() or thread.failed):
+                listen(daemon, thread, requests, events)
+        finally:
+            thread.end("the daemon was ended")
+            while thread.is_alive():
+                thread.join(LOOK_MS / 1e3)
+                send_events(daemon, thread, events)
+        if thread.failed:
+            raise BenchUnusable(thread.failed)
+
+
+def listen(daemon: Daemon, thread: BenchThread, requests: zmq.Socket[bytes], events: zmq.Socket[bytes]) -> None:
+    """Send what is to be published, answer one request if there is any."""
+    send_events(daemon, thread, events)
+    if not requests.poll(LOOK_MS):
+        return
+    parts = requests.recv_multipart()
+    request = decoded(parts[-1])
+    reply = request if isinstance(request, Refused) else daemon.answer(request)
+    requests.send_multipart([*parts[:-1], encode(ReplyEnvelope(body=reply))])
+
+
+def send_events(daemon: Daemon, thread: BenchThread, events: zmq.Socket[bytes]) -> None:
+    """Publish all that waits; a slow client loses events and asks for them by number."""
+    while True:
+        try:
+            event = thread.events.get_nowait()
+        except Empty:
+            return
+        events.send(daemon.numbered(event))
+
+
+@contextmanager
+def sockets(endpoint: str) -> Iterator[tuple[zmq.Socket[bytes], zmq.Socket[bytes]]]:
+    """The two bound sockets; closed without lingering."""
+    context = zmq.Context()
+    requests, events = context.socket(zmq.ROUTER), context.socket(zmq.PUB)
+    try:
+        events.set_hwm(QUEUE_MARK)
+        for socket in (requests, events):
+            socket.linger = 200
+        try:
+            requests.bind(endpoint)
+            events.bind(events_endpoint(endpoint))
+        except zmq.ZMQError as error:
+            raise NoEndpoint(f"cannot answer at {endpoint} ({error}): is another daemon there?") from error
+        yield requests, events
+    finally:
+        requests.close()
+        events.close()
+        context.term()
+        for name in (endpoint, events_endpoint(endpoint)):
+            if name.startswith("ipc://"):
+                Path(name.removeprefix("ipc://")).unlink(missing_ok=True)
+
+
+@contextmanager
+def sole_owner(endpoint: str) -> Iterator[None]:
+    """Refuse a second daemon at the same local endpoint: binding would silently take it over."""
+    if not endpoint.startswith("ipc://"):
+        yield
+        return
+    lock = Path(endpoint.removeprefix("ipc://") + ".lock")
+    with lock.open("w") as file:
+        try:
+            fcntl.flock(file, fcntl.LOCK_EX | fcntl.LOCK_NB)
+        except OSError as error:
+            raise NoEndpoint(f"a daemon answers at {endpoint} already") from error
+        yield
+        lock.unlink(missing_ok=True)
+
+
+@contextmanager
+def ending_signals() -> Iterator[Callable[[], bool]]:
+    """SIGINT and SIGTERM set a flag; more of them change nothing, so that the bench is always left safe."""
+    seen: list[int] = []
+
+    def note(number: int, _: FrameType | None) -> None:
+        seen.append(number)
+
+    before = {number: signal.signal(number, note) for number in (signal.SIGINT, signal.SIGTERM)}
+    try:
+        yield lambda: bool(seen)
+    finally:
+        for number, handler in before.items():
+            signal.signal(number, handler)

@@ -1,0 +1,68 @@
+"""Where a daemon answers: one socket for requests, one beside it for events. Never beyond this machine by default."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from urllib.parse import urlsplit
+
+from platformdirs import user_runtime_path
+
+LONGEST_PATH = 90  # a local socket's path must fit into some 100 bytes
+LOOPBACK = ("127.0.0.1", "localhost", "::1")
+
+
+class NoEndpoint(Exception):
+    """No daemon is known, or the endpoint cannot be used; one line with the cure."""
+
+
+def runtime_folder() -> Path:
+    """Where local sockets of this user live."""
+    return user_runtime_path("truepivot")
+
+
+def default_endpoint(bench: str) -> str:
+    """The local socket of a bench."""
+    return f"ipc://{runtime_folder() / bench}.socket"
+
+
+def events_endpoint(endpoint: str) -> str:
+    """The socket for events that belongs to one for requests."""
+    if endpoint.startswith("ipc://"):
+        return endpoint + "-events"
+    host, _, port = endpoint.rpartition(":")
+    return f"{host}:{int(port) + 1}"
+
+
+def checked(endpoint: str) -> str:
+    """The endpoint, if a daemon may be bound to it.
+
+    Raises:
+        NoEndpoint: it is neither local nor loopback, or its path is too long.
+    """
+    if endpoint.startswith("ipc://"):
+        path = events_endpoint(endpoint).removeprefix("ipc://")
+        if len(path) > LONGEST_PATH:
+            raise NoEndpoint(f"{path} is too long for a socket ({len(path)} characters, {LONGEST_PATH} allowed)")
+        Path(path).parent.mkdir(parents=True, exist_ok=True)
+        return endpoint
+    parts = urlsplit(endpoint)
+    if parts.scheme != "tcp" or parts.port is None:
+        raise NoEndpoint(f"{endpoint!r} is no endpoint; allowed: ipc://PATH or tcp://127.0.0.1:PORT")
+    if parts.hostname not in LOOPBACK:
+        raise NoEndpoint(f"{endpoint!r}: the daemon answers on this machine only (tcp://127.0.0.1:PORT)")
+    return endpoint
+
+
+def only_endpoint() -> str:
+    """The one daemon's that runs here.
+
+    Raises:
+        NoEndpoint: there is none, or more than one.
+    """
+    found = sorted(runtime_folder().glob("*.socket"))
+    if not found:
+        raise NoEndpoint("no daemon runs here; start one with: truepivot serve BENCH")
+    if len(found) > 1:
+        names = ", ".join(p.stem for p in found)
+        raise NoEndpoint(f"more than one daemon runs here ({names}): choose with --endpoint ipc://PATH")
+    return f"ipc://{found[0]}"
