@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import zipfile
 from collections import deque
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass, fields
 from pathlib import Path
 
@@ -93,70 +93,101 @@ def _key(pose: Pose) -> Key:
     return tuple(round(value / step) for value, step in zip(pose, STEP, strict=True))
 
 
-class Replay:
-    """What of a bank has been served, and what comes next."""
+def _nearest(places: Floats, pose: Pose) -> int | None:
+    """Index of the place that `pose` is, if a value half-way between two decimals may be rounded either way."""
+    if not len(places):
+        return None
+    off = np.abs(places - pose) / STEP
+    near = int(off.max(axis=1).argmin())
+    return near if off[near].max() <= 1.01 else None
 
-    def __init__(self, bank: Bank) -> None:
+
+class Replay:
+    """What of a strict bank has been served, and what comes next; a bank that is not strict is served in turn.
+
+    A visit to a pose is a move to it and all that happens until the next move. Whatever is captured during a visit
+    is the same stored point, so that a trial capture costs nothing; the next visit with a capture gets the next one.
+
+    Args:
+        bank: the stored points.
+        play: (5,) overrun by which a stage takes up backlash before it goes to a target; a place below the target
+            by this much may be passed, though nothing was measured there.
+        floor: (5,) low ends of travel, below which no overrun goes.
+    """
+
+    def __init__(self, bank: Bank, play: Pose, floor: Pose) -> None:
         self.bank = bank
         self.strict = bool(bank.strict)
         self._left: dict[Key, deque[int]] = {}
-        for index, pose in enumerate(bank.carriage):
-            self._left.setdefault(_key(pose.tolist()), deque()).append(index)
+        for index, place in enumerate(bank.carriage):
+            pose: Pose = place.tolist()
+            self._left.setdefault(_key(pose), deque()).append(index)
+        below = np.maximum(bank.carriage - play, np.minimum(bank.carriage, floor))
+        self._passed: Floats = below[np.any(below != bank.carriage, axis=1)]
         self._served = 0
         self._pose: Key | None = None
-        self._shown: int | None = None  # the point whose reports and temperature are answered now
-        self._captured = False
+        self._captured = False  # during this visit
+        self._in_memory = False  # captured, and not yet transferred
 
     def _find(self, pose: Pose) -> Key | None:
         key = _key(pose)
         if key in self._left:
             return key
-        # a value half-way between two decimals may have been rounded the other way
-        off = np.abs(self.bank.carriage - pose) / STEP
-        near = int(off.max(axis=1).argmin())
-        return _key(self.bank.carriage[near].tolist()) if off[near].max() <= 1.01 else None
+        near = _nearest(self.bank.carriage, pose)
+        return None if near is None else _key(self.bank.carriage[near].tolist())
 
-    def knows(self, pose: Pose) -> bool:
-        """Something measured at this pose is left to be served."""
+    def allows(self, pose: Pose) -> bool:
+        """Something measured there is left to be served, or the stage passes there on its way."""
         key = self._find(pose)
-        return key is not None and bool(self._left[key])
+        if key is not None and len(self._left[key]) > (self._captured and key == self._pose):
+            return True
+        return _nearest(self._passed, pose) is not None
 
     def go(self, pose: Pose) -> None:
-        """The stage is told to go there."""
+        """The stage is told to go there: a visit ends, another begins."""
         if not self.strict:
             return
+        if self._captured and self._pose is not None:
+            self._left[self._pose].popleft()
         self._pose = self._find(pose)
-        left = self._left.get(self._pose) if self._pose is not None else None
-        self._shown, self._captured = (left[0] if left else None), False
+        self._captured = self._in_memory = False
+
+    def _here(self) -> int | None:
+        """The point that belongs to this visit."""
+        return self._left[self._pose][0] if self._pose is not None and self._left[self._pose] else None
 
     def reported(self) -> Floats | None:
-        """What the stage reported there: before the capture, or, once it is taken, after it."""
-        if not self.strict or self._shown is None:
+        """What the stage reported: after the capture while it waits for its transfer, otherwise before it."""
+        here = self._here()
+        if not self.strict or here is None:
             return None
-        bank = self.bank
-        stored: Floats = (bank.reported_after if self._captured else bank.reported_before)[self._shown]
+        stored: Floats = (self.bank.reported_after if self._in_memory else self.bank.reported_before)[here]
         return stored
 
     def temperature_c(self) -> float:
-        """Of the point at which the stage stands; before the first move, of the first point."""
-        if self.strict:
-            return float(self.bank.temperature_c[self._shown or 0])
-        return float(self.bank.temperature_c[self._served % len(self.bank)])
+        """Of the point that will be served next; after the last one, its own."""
+        following, here = self._served, self._here()
+        if here is not None:
+            following = here + 1 if self._captured else here
+        last = len(self.bank) - 1
+        following = min(following, last) if self.strict else following % (last + 1)
+        return float(self.bank.temperature_c[following])
 
     def ready(self) -> bool:
         """A capture can be served here."""
-        return not self.strict or (self._pose is not None and bool(self._left[self._pose]))
+        return not self.strict or self._here() is not None
 
     def serve(self) -> int:
-        """The point whose counts are served, taken off the bank when strict."""
-        if not self.strict:
-            index = self._served % len(self.bank)
-        else:
-            assert self._pose is not None
-            index = self._left[self._pose].popleft()
-            self._shown, self._captured = index, True
-        self._served += 1
-        return index
+        """The point whose counts are served."""
+        here = self._here() if self.strict else self._served % len(self.bank)
+        assert here is not None
+        self._served = here + 1 if self.strict else self._served + 1
+        self._captured = self._in_memory = True
+        return here
+
+    def transferred(self) -> None:
+        """The capture has left the oscilloscope."""
+        self._in_memory = False
 
 
 @dataclass(frozen=True)
@@ -165,6 +196,7 @@ class BankCapture:
 
     bank: Bank
     index: int
+    transferred: Callable[[], None]
     x_reference: int = 0
 
     @property
@@ -197,6 +229,7 @@ class BankCapture:
 
     def codes(self, channel: int, bits: int) -> Codes:  # noqa: ARG002
         """As stored, widened if need be; raises -221 when the samples asked for are too narrow."""
+        self.transferred()
         counts: Codes = self.bank.counts[self.index]
         if bits < 8 * counts.dtype.itemsize:
             raise ScpiError(-221, "the bank holds 16-bit samples")
@@ -224,17 +257,17 @@ class BankSource:
 
     def take(self, shot: Shot) -> BankCapture:  # noqa: ARG002
         """The next one."""
-        return BankCapture(self._replay.bank, self._replay.serve())
+        return BankCapture(self._replay.bank, self._replay.serve(), self._replay.transferred)
 
 
 class BankMotion(Motion):
-    """A stage that, when the bank is strict, goes only where something is left to be served."""
+    """A stage that, when the bank is strict, goes only where the bank allows it."""
 
     replay: Replay
 
     def may_go(self, targets: Mapping[Axis, float]) -> bool:
         """Within travel, and in the bank."""
-        return super().may_go(targets) and (not self.replay.strict or self.replay.knows(self._pose(targets)))
+        return super().may_go(targets) and (not self.replay.strict or self.replay.allows(self._pose(targets)))
 
     def go_together(self, targets: Mapping[Axis, float], feed: float | None) -> None:
         """Also tell the bank."""

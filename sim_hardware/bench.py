@@ -8,13 +8,14 @@ from functools import partial
 
 from profiles.bench import Bench
 from profiles.instrument import Instrument, Role
+from profiles.model import AXES
 from sim_hardware.acquired import CHANNELS, CaptureSource, LiveSource
 from sim_hardware.bank import Bank, BankMotion, BankSource, Replay
 from sim_hardware.capture import Tank
 from sim_hardware.clock import Timeline
 from sim_hardware.conversation import Conversation
 from sim_hardware.generator import BurstGenerator
-from sim_hardware.motion import Motion, axis_limits
+from sim_hardware.motion import Motion, axis_limits, axis_overrun
 from sim_hardware.scope import Scope
 from sim_hardware.scope_curve import CurveScope
 from sim_hardware.scope_preamble import PreambleScope
@@ -65,12 +66,12 @@ def live_bench(
     return _assemble(instruments, timeline, motion, sync, generator, source, thermometer)
 
 
-def bank_bench(
-    bench: Bench, instruments: Mapping[Role, Instrument], timeline: Timeline, bank: Bank
-) -> SimulatedBench:
+def bank_bench(bench: Bench, instruments: Mapping[Role, Instrument], timeline: Timeline, bank: Bank) -> SimulatedBench:
     """Instruments that answer from a bank."""
-    replay = Replay(bank)
-    motion = BankMotion(axis_limits(bench.axes), MechanicsTruth(), timeline)
+    limits = axis_limits(bench.axes)
+    floor = [limits[a].low if a in limits else 0.0 for a in AXES]
+    replay = Replay(bank, [axis_overrun(bench.axes, a) for a in AXES], floor)
+    motion = BankMotion(limits, MechanicsTruth(), timeline)
     motion.replay = replay
     sync = SyncLine()
     generator = BurstGenerator(timeline, sync)

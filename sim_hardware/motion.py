@@ -59,6 +59,14 @@ def axis_limits(axes: AxisTable) -> dict[Axis, AxisLimits]:
     return limits
 
 
+def axis_overrun(axes: AxisTable, name: Axis) -> float:
+    """By how much the bench profile goes below a target to take up backlash, in SI; 0 for an axis it has not."""
+    axis = getattr(axes, name)
+    if axis is None:
+        return 0.0
+    return float(axis.backlash_mm * MM if isinstance(axis, LinearAxis) else axis.backlash_deg * DEG)
+
+
 class Move(NamedTuple):
     """One move of one axis: commanded position `start + scale * law.travelled(t - t0)`."""
 

@@ -128,9 +128,70 @@ def test_after_its_last_visit_a_pose_is_refused(tmp_path: Path) -> None:
     for _ in range(2):
         assert say(stage, move_words(content["carriage"][0])) == b"ok\n"
         assert say(scope, b":INIT;*OPC?\n") == b"1\n"
-    assert say(scope, b":INIT\nSYST:ERR?\n").startswith(b"-300,")
     assert say(stage, move_words(content["carriage"][0])) == b"error:15\n"
     assert say(stage, move_words(content["carriage"][1])) == b"ok\n"
+
+
+def test_a_visit_serves_one_point_however_often_it_is_captured_and_none_when_it_is_not(tmp_path: Path) -> None:
+    content, simulated = bank_at(tmp_path)
+    stage, scope = simulated.converse["stage"](), simulated.converse["oscilloscope"]()
+    say(scope, b":WAV:FORM WORD;UNS 0\n")
+
+    def counts() -> Any:
+        assert say(scope, b":INIT;*OPC?\n") == b"1\n"
+        return np.frombuffer(say(scope, b":WAV:DATA?\n")[5:-1], ">i2")
+
+    def report_x() -> float:
+        return report(simulated)[0]
+
+    before, after = (round(float(content[f"reported_{w}"][0, 0]) * 1e3, 4) for w in ("before", "after"))
+    say(stage, move_words(content["carriage"][0]))
+    np.testing.assert_array_equal(counts(), content["counts"][0])  # a trial, read before the point itself
+    assert report_x() == before
+    assert say(scope, b":INIT;*OPC?\n") == b"1\n"
+    assert report_x() == after
+    assert say(scope, b":WAV:COUN?\n") == b"16\n"
+    np.testing.assert_array_equal(counts(), content["counts"][0])
+    say(stage, move_words(content["carriage"][1]))
+    say(stage, move_words(content["carriage"][0]))
+    np.testing.assert_array_equal(counts(), content["counts"][2])
+    say(stage, move_words(content["carriage"][1]))  # the visit before was without a capture
+    np.testing.assert_array_equal(counts(), content["counts"][1])
+
+
+def test_the_temperature_is_that_of_the_point_that_is_served_next(tmp_path: Path) -> None:
+    content, simulated = bank_at(tmp_path)
+    stage, scope = simulated.converse["stage"](), simulated.converse["oscilloscope"]()
+
+    def temperature() -> float:
+        return float(say(simulated.converse["thermometer"](), b"MEAS:TEMP?\n"))
+
+    stored = content["temperature_c"].tolist()
+    assert temperature() == stored[0]
+    for k in range(5):
+        say(stage, move_words(content["carriage"][k]))
+        assert temperature() == stored[k]
+        say(scope, b":INIT;*OPC?\n")
+        assert temperature() == stored[min(k + 1, 4)]
+
+
+def test_before_it_is_sent_anywhere_nothing_can_be_captured(tmp_path: Path) -> None:
+    _, simulated = bank_at(tmp_path)
+    assert say(simulated.converse["oscilloscope"](), b":INIT\nSYST:ERR?\n").startswith(b"-300,")
+
+
+def test_a_stage_with_backlash_may_pass_below_its_targets_but_not_measure_there(tmp_path: Path) -> None:
+    content = arrays()
+    document = a_bench().model_dump(exclude_none=True)
+    document["axes"]["x"]["backlash_mm"] = 0.1
+    document["axes"]["theta"]["backlash_deg"] = 0.5
+    simulated = assembled(Bench.model_validate(document), Bank.read(saved(tmp_path, content)))
+    stage, scope = simulated.converse["stage"](), simulated.converse["oscilloscope"]()
+    assert say(stage, b"G90 G21 G0 X1.15 Z100 B9.5\n") == b"ok\n"
+    assert say(scope, b":INIT\nSYST:ERR?\n").startswith(b"-300,")
+    assert say(stage, move_words(content["carriage"][1])) == b"ok\n"
+    assert say(scope, b":INIT;*OPC?\n") == b"1\n"
+    assert say(stage, b"G90 G21 G0 X1.05 Z100 B9.5\n") == b"error:15\n"
 
 
 def test_the_prefix_family_refuses_with_its_own_error_and_takes_joined_moves(tmp_path: Path) -> None:
