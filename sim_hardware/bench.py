@@ -10,12 +10,13 @@ from profiles.bench import Bench
 from profiles.instrument import Instrument, Role
 from profiles.model import AXES
 from sim_hardware.acquired import CHANNELS, CaptureSource, LiveSource
-from sim_hardware.bank import Bank, BankMotion, BankSource, Replay
+from sim_hardware.bank import Bank
 from sim_hardware.capture import Tank
 from sim_hardware.clock import Timeline
 from sim_hardware.conversation import Conversation
 from sim_hardware.generator import BurstGenerator
 from sim_hardware.motion import Motion, axis_limits, axis_overrun
+from sim_hardware.replay import BankMotion, BankSource, Replay
 from sim_hardware.scope import Scope
 from sim_hardware.scope_curve import CurveScope
 from sim_hardware.scope_preamble import PreambleScope

@@ -14,27 +14,25 @@ from typing import NamedTuple
 from profiles.model import LINEAR_AXES, Axis
 from profiles.units import DEG, MM
 from sim_hardware.clock import Timeline
+from sim_hardware.iso_words import (
+    BAD_NUMBER,
+    BAD_WORD,
+    BEYOND_TRAVEL,
+    LOCKED,
+    UNSUPPORTED,
+    Refused,
+    words_of,
+)
 from sim_hardware.motion import Motion
 
 AXIS_WORDS: dict[str, Axis] = {"X": "x", "Y": "y", "Z": "z", "B": "theta", "C": "phi"}
 IDENTITY = b"[VER:QUIET BASIN STAGE-ISO 1.0]\n"
 GREETING = b"STAGE-ISO 1.0 ready\n"
 OK = b"ok\n"
-BAD_WORD, BAD_NUMBER, LOCKED, BEYOND_TRAVEL, UNSUPPORTED = 1, 2, 9, 15, 20
 QUEUE = 16  # moves that fit; the `ok` of one more comes when there is room
 LONGEST_LINE = 256
+LONGEST_DWELL_S = 3600.0
 INCH = 25.4
-
-_WORD = re.compile(r"([A-Z])([+-]?(?:\d+\.?\d*|\.\d+))?")
-_COMMENT = re.compile(r"\([^)]*\)")
-
-
-class Refused(Exception):
-    """The line is answered with `error:<number>`."""
-
-    def __init__(self, number: int) -> None:
-        super().__init__(str(number))
-        self.number = number
 
 
 class Later(NamedTuple):
@@ -49,28 +47,6 @@ class Queued(NamedTuple):
     end_s: float
     targets: dict[Axis, float]
     feed: float | None
-
-
-def words_of(line: str) -> dict[str, list[float]]:
-    """Letters and their numbers; ISO 6983 lets blanks stand anywhere and comments stand in parentheses.
-
-    Raises `Refused` for what is no word, or has no number.
-    """
-    text = "".join(_COMMENT.sub("", line).upper().split()).removeprefix("%")
-    words: dict[str, list[float]] = {}
-    at = 0
-    while at < len(text):
-        match = _WORD.match(text, at)
-        if match is None:
-            raise Refused(BAD_WORD)
-        if match.group(2) is None or (match.end() < len(text) and text[match.end()] in "+-."):
-            raise Refused(BAD_NUMBER)
-        words.setdefault(match.group(1), []).append(float(match.group(2)))
-        at = match.end()
-    if any(len(numbers) > 1 for letter, numbers in words.items() if letter != "G"):
-        raise Refused(BAD_WORD)
-    words.pop("N", None)  # line numbers are for people
-    return words
 
 
 class IsoStage:
@@ -180,7 +156,7 @@ class IsoStage:
             seconds = words.pop("P")[0]
             if words:
                 raise Refused(BAD_WORD)
-            if seconds < 0:
+            if not 0 <= seconds <= LONGEST_DWELL_S:
                 raise Refused(BAD_NUMBER)
             return self._dwell(seconds)
         targets = self._targets(words)

@@ -72,6 +72,7 @@ ISO_TRANSCRIPT = [
     (b"G0 X1 X2\n", b"error:1\n"),
     (b"G4\n", b"error:1\n"),
     (b"G4 P-1\n", b"error:2\n"),
+    (b"G4 P4000\n", b"error:2\n"),
     (b"\xff\n", b"error:1\n"),
     (b"G2 X1\n", b"error:20\n"),
     (b"M3\n", b"error:20\n"),
