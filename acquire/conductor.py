@@ -179,6 +179,8 @@ class Conductor:
         first = self.done
         self._state("running")
         try:
+            if points:
+                self._start(points[0])
             for at, point in enumerate(points):
                 self._between(recorder)
                 following = points[at + 1] if at + 1 < len(points) else None

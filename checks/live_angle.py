@@ -18,6 +18,7 @@ MAIN_LOBE_DB = -8.0
 FEWEST = 12
 WORTH_SAYING = radians(0.15)
 MATTERS = radians(0.5)
+BALANCED = 0.8  # one side must reach so far of what the other does: an odd part needs both
 CURVED = 0.2  # of the logarithm at the largest angle: flatter patterns do not see the zero
 
 
@@ -40,6 +41,7 @@ class AngleCheck:
         self._count = np.zeros(lines, np.int64)
         self._reference: NDArray[np.float64] | None = None
         self._largest = np.zeros(lines)
+        self._reached = np.zeros((lines, 2))  # largest |s| on either side
         self._standing = Standing()
         self._points = 0
 
@@ -62,6 +64,8 @@ class AngleCheck:
         self._square += log**2
         self._count += usable
         self._largest = np.maximum(self._largest, keep * abs(s))
+        side = int(s > 0)
+        self._reached[:, side] = np.maximum(self._reached[:, side], keep * abs(s))
         if self._points < FEWEST or seen.reference:
             return []
         return self._standing.now(self._finding(seen.index), seen.index)
@@ -93,7 +97,8 @@ class AngleCheck:
     def _estimate(self) -> tuple[float, float, int] | None:
         """theta0, its standard uncertainty, degrees of freedom; None while nothing can be said."""
         weights, values, freedom = [], [], 0
-        for line in np.nonzero(self._count >= FEWEST)[0]:
+        both_sides = self._reached.min(axis=1) >= BALANCED * self._largest
+        for line in np.nonzero((self._count >= FEWEST) & both_sides)[0]:
             scale = np.maximum(self._largest[line], 1e-6) ** np.arange(TERMS)
             normal = self._normal[line] / np.outer(scale, scale)
             if np.linalg.cond(normal) > 1e9:

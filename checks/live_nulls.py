@@ -21,21 +21,23 @@ from checks.wording import decibel, mhz, rounded
 
 FIRST_NULL = 3.8317059702  # first zero of J1
 DIP_DB = 10.0
-RIPPLE_DB = 0.7
+RIPPLE_DB = 1.0
 RIPPLE_LINES = 8
 RIPPLE_EXPLAINS = 0.8
-SMOOTH_TERMS = 4  # a cubic in the number of the harmonic
+SMOOTH_TERMS = 4  # 1, ln n (a steep wave falls as 1/n), n (preamplifier), n² (absorption)
+SLOWEST = 11  # of 64 delays: slower ripples cannot be told from the shape of the comb
 DELAYS = 64
 STRONG = 3.0
+LEAST_U = 0.02
 
 
 class SpectrumCheck:
     """`null.source` and `null.echo`, from the mean spectrum of the reference points.
 
-    Model: the level of harmonic n in dB is a cubic in n. A source's null: one line lies 10 dB or more below the line
-    through its neighbours. An echo of delay tau: ripple g cos(2 pi n f tau) on top of the cubic; lines are f apart,
-    so tau is known up to whole cycles of f. Statistic: share of the residual sum of squares that the best of 64
-    delays explains; threshold 0.8 with an amplitude of 0.7 dB or more (common practice, no source).
+    Model: the level of harmonic n in dB is smooth, a sum of 1, ln n, n and n². A source's null: one line lies 10 dB
+    or more below the line through its neighbours. An echo of delay tau: ripple g cos(2 pi n f tau) on top of it; lines
+    are f apart, so tau is known up to whole cycles of f. Statistic: share of the residual sum of squares that the best
+    of the delays explains; threshold 0.8 with an amplitude of 1 dB or more (common practice, no source).
     """
 
     def __init__(self, circumstances: Circumstances) -> None:
@@ -57,7 +59,7 @@ class SpectrumCheck:
         clean = (self._power - self._noise) / self._count
         floor = np.maximum(self._noise / self._count, 1e-300)
         level = 10 * np.log10(np.maximum(clean, floor))
-        strong = clean > 10 * floor
+        strong = clean > 100 * floor
         ripple = self._ripple(level, strong)
         changes = self._echo.now(self._say_echo(ripple, seen.index) if ripple else None, seen.index)
         dips = [] if ripple else self._dips(level, strong)
@@ -82,12 +84,12 @@ class SpectrumCheck:
         if lines.size < RIPPLE_LINES:
             return None
         n = lines + 1.0
-        smooth = np.vander((n - n.mean()) / n.size, SMOOTH_TERMS)
+        smooth = np.stack([np.ones_like(n), np.log(n), n / n.size, (n / n.size) ** 2], axis=1)
         y = level[lines]
         plain = y - smooth @ np.linalg.lstsq(smooth, y, rcond=None)[0]
         total = float(plain @ plain)
         best = (0.0, 0.0, 0.0)
-        for step in range(4, DELAYS // 2 + 1):  # slower ripples are part of the cubic
+        for step in range(SLOWEST, DELAYS // 2 + 1):
             turn = 2 * pi * step / DELAYS
             model = np.hstack([smooth, np.cos(turn * n)[:, None], np.sin(turn * n)[:, None]])
             solution = np.linalg.lstsq(model, y, rcond=None)[0]
@@ -140,7 +142,7 @@ class ElementNullCheck:
         self._tracker = ArrivalTracker(circumstances)
         self._phase: NDArray[np.complex128] | None = None
         self._positive, self._negative = 0.0, np.inf
-        self._limit = 1.6 * FIRST_NULL * 1500 / (2 * pi * circumstances.nominal_radius_m)
+        self._limit = 1.4 * FIRST_NULL * 1500 / (2 * pi * circumstances.nominal_radius_m)
         self._standing = Standing()
         self._points = 0
 
@@ -160,7 +162,7 @@ class ElementNullCheck:
         clear = (np.abs(signed) > STRONG * seen.component_noise_v) & (product < self._limit)
         if (clear & (signed < 0)).any():
             self._negative = min(self._negative, float(product[clear & (signed < 0)].min()))
-        below = clear & (signed > 0) & (product < self._negative)
+        below = clear & (signed > 0)
         if below.any():
             self._positive = max(self._positive, float(product[below].max()))
         if not np.isfinite(self._negative) or self._positive <= 0:
@@ -172,8 +174,9 @@ class ElementNullCheck:
         return []
 
     def _finding(self, seen: Observation) -> Finding:
-        low, high = min(self._positive, self._negative), self._negative
-        middle, u = (low + high) / 2, max((high - low) / (2 * 3**0.5), 1e3)
+        # the two sides do not see the same null where the stage's zero is off: then the bounds cross
+        middle = (self._positive + self._negative) / 2
+        u = max(abs(self._negative - self._positive) / (2 * 3**0.5), LEAST_U * middle)
         c = speed_of_sound(seen.temperature_c)
         radius = FIRST_NULL * c / (2 * pi * middle)
         top = float(self._frequencies[-1])

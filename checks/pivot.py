@@ -19,6 +19,7 @@ from numpy.typing import NDArray
 Vector = NDArray[np.float64]
 TIMING_FLOOR_S = 2e-11  # trigger jitter and sampling clock leave at least this much
 COLUMNS = 4
+SCALE_U = 5e-4  # relative: speed of sound from a thermometer within 0.2 °C, scale of the rotation axis
 
 
 @dataclass(frozen=True)
@@ -95,13 +96,15 @@ class PivotFit:
         covariance = inverse * max(1.0, chi2 / freedom)
         _, x, z = solution[:3]
         # the curvature of the wave adds X^2/(2 L c), X = ex cos + ez sin; with sin^2 = 2 (1 - cos) and
-        # sin cos = sin to leading order it takes the columns of ex and ez, and is put right there
-        bend = 1 / self.distance_m if self.distance_m > 0 else 0.0
-        x, z = x + x * z * bend, z + (z**2 - x**2) * bend
+        # sin cos = sin to leading order it takes the columns of ex and ez. The wave is bent as from the middle of
+        # the source or less (plane), so half of it is put right, and the whole range is uncertainty (rectangular)
+        bend = np.array([x * z, z**2 - x**2]) / self.distance_m if self.distance_m > 0 else np.zeros(2)
+        x, z = x + bend[0] / 2, z + bend[1] / 2
+        model = bend**2 / 12 + (SCALE_U * np.array([x, z])) ** 2
         return PivotEstimate(
             x_m=float(x),
             z_m=float(z),
-            covariance=covariance[1:3, 1:3],
+            covariance=covariance[1:3, 1:3] + np.diag(model),
             residual_sd_s=float(np.sqrt(chi2 / self.weight * self.points / freedom)),
             arrival_s=float(solution[0]) + self.origin_s,
             drift_s=float(solution[3]) if drift else 0.0,

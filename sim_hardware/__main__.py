@@ -49,9 +49,7 @@ def _parser() -> argparse.ArgumentParser:
     parser.add_argument("bench", metavar="BENCH", help="bench file, or the name of a bench profile")
     parser.add_argument("--speed", type=_speed, default=1.0, help="1: real time, 20: faster, max: at once")
     parser.add_argument("--free-ports", action="store_true", help="free ports and links instead of the addresses")
-    parser.add_argument(
-        "--write-bench", type=Path, metavar="PATH", help="write the bench with the addresses taken"
-    )
+    parser.add_argument("--write-bench", type=Path, metavar="PATH", help="write the bench with the addresses taken")
     parser.add_argument("--bank", type=Path, metavar="FILE", help="answer from stored captures (.npz)")
     parser.add_argument("--seed", type=_seed, help="of noise and errors; otherwise the one in the bench file")
     parser.add_argument("--with-parent", action="store_true", help="end when standard input ends")

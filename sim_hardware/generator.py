@@ -21,9 +21,7 @@ PERIOD = Real(1e-6, 100.0, "S")
 class BurstGenerator(ScpiInstrument):
     """Drives the source while output and burst mode are on; it has no continuous output."""
 
-    def __init__(
-        self, timeline: Timeline, sync: SyncLine, identity: str = "QUIET BASIN,GENERATOR,0001,1.0"
-    ) -> None:
+    def __init__(self, timeline: Timeline, sync: SyncLine, identity: str = "QUIET BASIN,GENERATOR,0001,1.0") -> None:
         super().__init__(identity, timeline.run_due)
         self._timeline = timeline
         self._sync = sync

@@ -55,9 +55,7 @@ def _open(loop: Loop, role: Role, address: str, converse: Converse, free_folder:
     elif tcp is not None:
         host, port = TcpServer(loop, tcp.group(1), int(tcp.group(2)), converse).address
     else:
-        raise BenchError(
-            f"instruments.{role}: {address} cannot be simulated; allowed: tcp://HOST:PORT, serial:///PATH"
-        )
+        raise BenchError(f"instruments.{role}: {address} cannot be simulated; allowed: tcp://HOST:PORT, serial:///PATH")
     return f"tcp://{host}:{port}"
 
 

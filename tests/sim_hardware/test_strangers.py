@@ -56,9 +56,7 @@ def test_plain_pyvisa_reads_identity_error_queue_and_a_block(simulator: Simulato
         manager.close()
 
 
-@pytest.mark.skipif(
-    shutil.which("lxi") is None, reason="the program lxi (Debian package lxi-tools) is not installed"
-)
+@pytest.mark.skipif(shutil.which("lxi") is None, reason="the program lxi (Debian package lxi-tools) is not installed")
 def test_lxi_tools_reads_identity_error_queue_and_a_block(simulator: Simulator) -> None:
     def ask(message: str) -> bytes:
         words = ["lxi", "scpi", "-a", "127.0.0.1", "-p", str(simulator.port("oscilloscope")), "-r", message]
