@@ -40,7 +40,7 @@ from profiles.units import DEG, MM, MS, US
 HOMING_S = 300.0
 MOVE_S = 120.0
 SLACK_S = 3.0  # beyond the time that the triggers of a capture take
-TEMPERATURE_EVERY_S = 2.0
+THERMOMETER_S = 0.05
 PROGRESS_EVERY_S = 0.2
 RECONNECTS = 3
 HOLD_LOOKS_S = 0.05
@@ -73,7 +73,7 @@ class Conductor:
         self._store = store
         self._pivot: Pivot = job.pivot
         self._temperature_c = job.bench.water.temperature_c
-        self._asked_at = -inf
+        self._patience_s = THERMOMETER_S
         self._answer_due = False
         self._source_on = False
         self._reconnects = 0
@@ -229,7 +229,7 @@ class Conductor:
         scope.wait(self._capture_timeout_s(), self._control.stop_asked)
         captured = monotonic()
         after = self._where(self._i.stage.position())
-        self._look_after_temperature(captured)
+        self._look_after_temperature(first=point.index == 0)
         if following is not None:
             self._start(following)
         trace = scope.read()
@@ -355,15 +355,24 @@ class Conductor:
         if self._i.thermometer is not None:
             self._i.thermometer.ask_temperature()
             self._temperature_c = self._i.thermometer.answer()
-            self._asked_at = monotonic()
-
-    def _look_after_temperature(self, now: float) -> None:
-        """Ask now and then; the answer is fetched a point later, so that a slow thermometer costs nothing."""
-        if self._i.thermometer is None:
-            return
-        if self._answer_due:
-            self._temperature_c = self._i.thermometer.answer()
-            self._answer_due = False
-        elif now - self._asked_at >= TEMPERATURE_EVERY_S:
             self._i.thermometer.ask_temperature()
-            self._asked_at, self._answer_due = now, True
+            self._answer_due = True
+        self._patience_s = THERMOMETER_S
+
+    def _look_after_temperature(self, first: bool) -> None:
+        """Take the answer asked for a point ago, and ask anew; a thermometer that is slower is not waited for.
+
+        Counted in points and not in seconds, so that a replay stores the same temperature with the same point.
+        """
+        thermometer = self._i.thermometer
+        if thermometer is None:
+            return
+        if not self._answer_due:  # after a repair
+            thermometer.ask_temperature()
+            self._answer_due = True
+        elif thermometer.answer_ready(self._patience_s):
+            value = thermometer.answer()
+            self._temperature_c = self._temperature_c if first else value
+            thermometer.ask_temperature()
+        else:
+            self._patience_s = 0.0

@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
+import json
 from collections.abc import Iterable, Sequence
 from dataclasses import asdict
+from typing import Any
 
 import numpy as np
 
@@ -84,18 +86,18 @@ def finding_event(change: Change) -> FindingChanged:
     return FindingChanged(action=change.action, at_point=change.at_point, finding=asdict(change.finding))
 
 
-def changes_as_mappings(changes: Iterable[Change]) -> list[dict[str, object]]:
-    """For the attributes of a store."""
-    return [{"action": c.action, "at_point": c.at_point, "finding": asdict(c.finding)} for c in changes]
+def changes_as_mappings(changes: Iterable[Change]) -> list[dict[str, Any]]:
+    """For the attributes of a store: exactly what reading them back from JSON gives."""
+    plain = [{"action": c.action, "at_point": c.at_point, "finding": asdict(c.finding)} for c in changes]
+    mappings: list[dict[str, Any]] = json.loads(json.dumps(plain))
+    return mappings
 
 
-def standing(changes: Iterable[dict[str, object]]) -> list[dict[str, object]]:
+def standing(changes: Iterable[dict[str, Any]]) -> list[dict[str, Any]]:
     """The findings that stand after all changes, in the order in which they were first raised."""
-    found: dict[object, dict[str, object]] = {}
+    found: dict[str, dict[str, Any]] = {}
     for change in changes:
         finding = change["finding"]
-        if not isinstance(finding, dict):
-            continue
         if change["action"] == "cleared":
             found.pop(finding["code"], None)
         else:

@@ -3,13 +3,15 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from math import log10
 
 import numpy as np
 from numpy.typing import NDArray
 
 from checks.arrival import ArrivalTracker
+from checks.averaging import W6_TO_W
+from checks.element import X_6DB
 from checks.errors import MeasurementError
 from checks.observation import Circumstances, Observation
 
@@ -17,6 +19,8 @@ Vector = NDArray[np.float64]
 USABLE_DB = 20.0  # signal over noise at angle zero that a line needs
 REPEATABILITY_FLOOR = 2e-4
 FEWEST_ANGLES = 5
+BEAM_EXPONENT = -0.75
+PISTON_SPEED = 1485.0  # m/s; a beam width need not be known better
 
 
 @dataclass(frozen=True)
@@ -187,6 +191,22 @@ def signal_to_noise_db(seen: Observation) -> Vector:
     power = np.abs(seen.components) ** 2 - 2 * seen.component_noise_v**2
     noise = 2 * seen.component_noise_v**2
     return np.asarray(10 * np.log10(np.maximum(power, 0.01 * noise) / np.maximum(noise, 1e-300)))
+
+
+def seen_from_the_source(plane: PlaneResponse, x_m: float, z_m: float, c: Circumstances) -> PlaneResponse:
+    """The plane as it would be with the element centre on the axis of rotation, for a known pivot offset.
+
+    The turn carries the element sideways by X = ex (cos - 1) + ez sin. So it sees the middle of the source under
+    an angle smaller by X/L, and stands off the middle of the beam, whose level falls by exp(-X²/w²). The width is
+    that of a piston's far field, 2 x 2.21 L/(k a), and harmonic n is narrower by n^-3/4, between the quasi-linear
+    n^-1/2 and the linear n^-1 (derived; `checks.pivot` has the convention).
+    """
+    aside = x_m * (np.cos(plane.theta) - 1) + z_m * np.sin(plane.theta)
+    order = plane.frequencies_hz / c.drive_hz
+    wavenumber = 2 * np.pi * c.drive_hz * c.distance_m / PISTON_SPEED
+    width6 = 2 * X_6DB * c.distance_m**2 / (wavenumber * c.source_radius_m) * order**BEAM_EXPONENT
+    fallen = np.exp(-((aside[:, None] / (width6 * W6_TO_W)) ** 2))
+    return replace(plane, theta=plane.theta - aside / c.distance_m, amplitude=plane.amplitude / fallen)
 
 
 def decibels(ratio: float) -> float:

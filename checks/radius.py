@@ -112,7 +112,7 @@ def _fit(plane: PlaneResponse, lines: NDArray[np.intp], speed_m_s: float, nomina
     best = None
     for start in (1.0, 1.6):
         p0 = np.concatenate([[0.0], np.full(count, start), np.ones(count)])
-        solved = least_squares(residual, p0, jac=jacobian, method="trf", x_scale="jac", max_nfev=200)
+        solved = least_squares(residual, p0, jac=jacobian, method="lm", x_scale="jac", max_nfev=200)
         if best is None or solved.cost < best.cost:
             best = solved
     if best is None:

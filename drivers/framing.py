@@ -27,6 +27,10 @@ class Inbox:
     def __len__(self) -> int:
         return len(self._bytes)
 
+    def has_line(self) -> bool:
+        """Whether `line` would give one."""
+        return b"\n" in self._bytes
+
     def line(self) -> str | None:
         """Take one line without its end, or None while it is not complete.
 
@@ -57,9 +61,7 @@ class Inbox:
             return None
         digits = head[1] - ord("0")
         if digits == 0:
-            raise ProtocolError(
-                "the instrument sent a block of indefinite length (#0), which has no end on this link"
-            )
+            raise ProtocolError("the instrument sent a block of indefinite length (#0), which has no end on this link")
         if not 1 <= digits <= 9:
             raise ProtocolError(f"a block cannot begin with {bytes(head[:2])!r}")
         if len(head) < 2 + digits:

@@ -48,6 +48,4 @@ class BurstGenerator(ScpiInstrument):
         state = self.ask("output_state").strip().upper()
         if (state in ("1", "ON")) != on:
             wanted = "on" if on else "off"
-            raise InstrumentError(
-                f"the generator's output is {state!r} after it was switched {wanted}: do it by hand"
-            )
+            raise InstrumentError(f"the generator's output is {state!r} after it was switched {wanted}: do it by hand")

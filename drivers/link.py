@@ -132,6 +132,21 @@ class Link(ABC):
         self.transcript.add("<", line.encode())
         return line
 
+    def line_ready(self, wait_s: float) -> bool:
+        """Whether a reply line is there, or comes within `wait_s`; unlike a timeout this breaks nothing.
+
+        Raises:
+            LinkLost: the peer closed the connection.
+        """
+        self._check_in_step()
+        deadline = monotonic() + wait_s
+        while not self._inbox.has_line():
+            left = deadline - monotonic()
+            self._inbox.feed(self._receive(max(left, 1e-4)))
+            if left <= 0:
+                return self._inbox.has_line()
+        return True
+
     def read_block(self, timeout_s: float | None = None) -> bytearray:
         """The body of a definite-length block; the end of line after it is taken too.
 
@@ -178,9 +193,7 @@ class Link(ABC):
         left = deadline - monotonic()
         if left <= 0:
             self._out_of_step = True
-            raise LinkTimeout(
-                f"{self.address} did not reply in time; is it switched on, and speaking this protocol?"
-            )
+            raise LinkTimeout(f"{self.address} did not reply in time; is it switched on, and speaking this protocol?")
         return min(left, SLICE_S)
 
     def _lost(self, why: str) -> LinkLost:

@@ -121,6 +121,10 @@ class Thermometer(Instrument, Protocol):
         """Send the question."""
         ...
 
+    def answer_ready(self, wait_s: float) -> bool:
+        """Whether the reply is there, or comes within `wait_s`."""
+        ...
+
     def answer(self) -> float:
         """The reply, in degrees Celsius."""
         ...

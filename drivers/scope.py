@@ -183,9 +183,7 @@ def decode(block: bytearray, transfer: Transfer) -> Counts:
             np.bitwise_xor(raw8, np.uint8(0x80), out=raw8)
         return raw8.view(np.int8)
     if len(block) % 2:
-        raise ProtocolError(
-            f"the oscilloscope sent {len(block)} bytes, which is no whole number of 16-bit samples"
-        )
+        raise ProtocolError(f"the oscilloscope sent {len(block)} bytes, which is no whole number of 16-bit samples")
     wire = np.dtype(np.uint16).newbyteorder(">" if transfer.byte_order == "msb_first" else "<")
     raw16 = np.frombuffer(block, wire)
     if not wire.isnative:

@@ -11,9 +11,7 @@ from drivers.link import Link
 class SerialLink(Link):
     """`serial:///dev/NAME`. Opening some boards restarts them: what they were doing is then unknown."""
 
-    def __init__(
-        self, address: str, timeout_s: float = 2.0, terminator: str = "\n", baud_rate: int = 115_200
-    ) -> None:
+    def __init__(self, address: str, timeout_s: float = 2.0, terminator: str = "\n", baud_rate: int = 115_200) -> None:
         super().__init__(address, timeout_s, terminator)
         self._device = address.removeprefix("serial://")
         self._baud_rate = baud_rate

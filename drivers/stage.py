@@ -233,6 +233,5 @@ class MotionStage(ABC):
         linear = self.profile.still_tolerance_um * 1e-6
         angular = self.profile.still_tolerance_mdeg * 1e-3 * DEG
         return all(
-            abs(one.position[a] - other.position[a]) <= (linear if a in LINEAR_AXES else angular)
-            for a in self.axes
+            abs(one.position[a] - other.position[a]) <= (linear if a in LINEAR_AXES else angular) for a in self.axes
         )

@@ -53,9 +53,7 @@ class IsoStage(MotionStage):
             match = re.match(r"(error|ALARM):(\d+)", reply)
             if match:
                 number = int(match[2])
-                told = (
-                    ERRORS.get(number, "see the controller's manual") if match[1] == "error" else "home it again"
-                )
+                told = ERRORS.get(number, "see the controller's manual") if match[1] == "error" else "home it again"
                 raise InstrumentError(f"the stage answered {reply}: {told}", number)
 
     def _send_move(self, target: Mapping[Axis, float]) -> None:

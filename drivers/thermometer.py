@@ -15,6 +15,10 @@ class QueryThermometer(ScpiInstrument):
         """Send the question; the answer is fetched later, so that a slow instrument holds nothing up."""
         self.send("temperature")
 
+    def answer_ready(self, wait_s: float) -> bool:
+        """Whether the reply is there, or comes within `wait_s`."""
+        return self.link.line_ready(wait_s)
+
     def answer(self) -> float:
         """The reply, degrees Celsius.
 

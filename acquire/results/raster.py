@@ -1,0 +1,135 @@
+"""Results of a raster: maps of the peaks and of the pulse-pressure-squared integral, peak position, -6 dB widths."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from acquire.results.quantity import Quantity
+from checks.averaging import averaged_share
+from checks.beam import Peak, Width, peak_of, width_of
+from checks.errors import MeasurementError
+from checks.observation import Circumstances, Observation
+
+Array = NDArray[np.float64]
+AXES = "xyz"
+BEAMWIDTH = "-6 dB on the pulse-pressure-squared integral (IEC 61828)"
+
+
+@dataclass(frozen=True)
+class RasterResult:
+    """A line or a plane; `axes` are the numbers of the axes that move, fastest first.
+
+    Attributes:
+        places: shape (n, 3), metres. peak_v, trough_v, integral_v2s: shape (n,), noise taken off the integral.
+        amplitude: root of the integral, V s^½, and its standard uncertainty `sigma`, each shape (n,).
+        widths: by axis name, along the line through the point nearest to the peak; or why there is none.
+    """
+
+    axes: tuple[int, ...]
+    places: Array
+    peak_v: Array
+    trough_v: Array
+    integral_v2s: Array
+    amplitude: Array
+    sigma: Array
+    peak: Peak | None
+    widths: dict[str, Width | str]
+    steps: tuple[float, ...]
+
+
+def raster_result(seen: Sequence[Observation], circumstances: Circumstances) -> RasterResult:
+    """Result of a raster; reference revisits are left out.
+
+    Raises:
+        MeasurementError: nothing moved.
+    """
+    points = [o for o in seen if not o.reference] or list(seen)
+    places = np.array([(o.commanded.x, o.commanded.y, o.commanded.z) for o in points])
+    moving = [i for i in range(3) if np.ptp(places[:, i]) > 1e-9]
+    if not moving:
+        raise MeasurementError("nothing moved in this raster: there is no beam to measure")
+    gate_s = (circumstances.gate.stop - circumstances.gate.start) * circumstances.sample_interval_s
+    noise = np.array([o.noise_rms_v for o in points])
+    integral = np.array([o.square_integral_v2s for o in points]) - noise**2 * gate_s
+    integral = np.maximum(integral, 1e-6 * integral.max())
+    amplitude = np.sqrt(integral)
+    # the integral of (s + n)^2 scatters by 2 sigma sqrt(integral dt), so its root by sigma sqrt(dt)
+    sigma = noise * np.sqrt(circumstances.sample_interval_s)
+    peak = _peak(places, amplitude, moving)
+    at = places[np.argmax(amplitude)]
+    widths = {AXES[i]: _width(places, amplitude, sigma, i, moving, at) for i in moving}
+    steps = tuple(float(np.median(np.diff(np.unique(np.round(places[:, i], 9))))) for i in moving)
+    return RasterResult(
+        axes=tuple(moving),
+        places=places,
+        peak_v=np.array([o.peak_v for o in points]),
+        trough_v=np.array([-o.trough_v for o in points]),
+        integral_v2s=integral,
+        amplitude=amplitude,
+        sigma=sigma,
+        peak=peak,
+        widths=widths,
+        steps=steps,
+    )
+
+
+def _peak(places: Array, amplitude: Array, moving: list[int]) -> Peak | None:
+    if len(moving) < 2:
+        return None
+    try:
+        return peak_of(places[:, moving[0]], places[:, moving[1]], amplitude)
+    except MeasurementError:
+        return None
+
+
+def _width(places: Array, amplitude: Array, sigma: Array, axis: int, moving: list[int], at: Array) -> Width | str:
+    """Along the line of points that runs in `axis` through the place of the largest level."""
+    others = [i for i in moving if i != axis]
+    rows = np.all(np.abs(places[:, others] - at[others]) < 1e-9, axis=1) if others else np.ones(len(places), bool)
+    try:
+        return width_of(places[rows, axis], amplitude[rows], sigma[rows])
+    except MeasurementError as error:
+        return str(error)
+
+
+def quantities(result: RasterResult, circumstances: Circumstances) -> list[Quantity]:
+    """Every result as a quantity."""
+    found = []
+    for axis, width in result.widths.items():
+        if isinstance(width, str):
+            found.append(Quantity("beamwidth", None, "m", None, {"axis": axis}, width))
+            continue
+        found.append(Quantity("beamwidth", width.width_m, "m", width.standard_uncertainty_m, {"axis": axis}, BEAMWIDTH))
+        share = averaged_share(circumstances.nominal_radius_m, width.width_m)
+        method = "Gaussian beam of the measured width, nominal radius; an estimate, nothing was corrected"
+        found.append(Quantity("share of the peak read", share, "1", None, {"axis": axis}, method))
+    if result.peak is not None:
+        values = ((result.peak.x_m, result.peak.x_u_m), (result.peak.y_m, result.peak.y_u_m))
+        for axis_number, (value, u) in zip(result.axes[:2], values, strict=True):
+            conditions = {"axis": AXES[axis_number]}
+            found.append(Quantity("beam peak", value, "m", u, conditions, "quadratic of the level about the largest"))
+    for axis, width in result.widths.items():
+        if result.peak is None and not isinstance(width, str):
+            found.append(Quantity("beam peak", width.peak_m, "m", None, {"axis": axis}, "top of the spline"))
+    at = int(np.argmax(result.amplitude))
+    found.append(
+        Quantity("positive peak", float(result.peak_v[at]), "V", float(result.sigma[at]), {}, "largest of the map")
+    )
+    found.append(
+        Quantity("negative peak", float(result.trough_v[at]), "V", float(result.sigma[at]), {}, "at the same point")
+    )
+    return found
+
+
+def on_grid(result: RasterResult, values: Array) -> tuple[Array, Array, Array]:
+    """Coordinates of the two fastest axes and the values on their grid, (y, x); NaN where no point was taken."""
+    a, b = result.axes[0], result.axes[1]
+    x, column = np.unique(np.round(result.places[:, a], 9), return_inverse=True)
+    y, row = np.unique(np.round(result.places[:, b], 9), return_inverse=True)
+    grid = np.full((y.size, x.size), np.nan)
+    grid[row, column] = values
+    return x, y, grid
