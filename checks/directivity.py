@@ -193,19 +193,26 @@ def signal_to_noise_db(seen: Observation) -> Vector:
     return np.asarray(10 * np.log10(np.maximum(power, 0.01 * noise) / np.maximum(noise, 1e-300)))
 
 
+def beam_w(frequencies_hz: Vector, c: Circumstances) -> Vector:
+    """1/e radius of the amplitude across the beam at the element, shape of `frequencies_hz`, m; an estimate."""
+    k = 2 * np.pi * c.drive_hz / PISTON_SPEED
+    width6 = 2 * X_6DB * c.distance_m / (k * c.source_radius_m) * (frequencies_hz / c.drive_hz) ** BEAM_EXPONENT
+    return np.asarray(width6 * W6_TO_W)
+
+
 def seen_from_the_source(plane: PlaneResponse, x_m: float, z_m: float, c: Circumstances) -> PlaneResponse:
     """The plane as it would be with the element centre on the axis of rotation, for a known pivot offset.
 
     The turn carries the element sideways by X = ex (cos - 1) + ez sin. So it sees the middle of the source under
-    an angle smaller by X/L, and stands off the middle of the beam, whose level falls by exp(-X²/w²). The width is
-    that of a piston's far field, 2 x 2.21 L/(k a), and harmonic n is narrower by n^-3/4, between the quasi-linear
-    n^-1/2 and the linear n^-1 (derived; `checks.pivot` has the convention).
+    an angle smaller by X/L, and stands off the middle of the beam, whose level falls by exp(-X²/w²). It also goes
+    along the beam by Z = ez (cos - 1) - ex sin, and the wave spreads as L/(L + Z). The width is that of a piston's
+    far field, 2 x 2.21 L/(k a), and harmonic n is narrower by n^-3/4, between the quasi-linear n^-1/2 and the
+    linear n^-1 (derived; `checks.pivot` has the convention).
     """
     aside = x_m * (np.cos(plane.theta) - 1) + z_m * np.sin(plane.theta)
-    order = plane.frequencies_hz / c.drive_hz
-    wavenumber = 2 * np.pi * c.drive_hz * c.distance_m / PISTON_SPEED
-    width6 = 2 * X_6DB * c.distance_m**2 / (wavenumber * c.source_radius_m) * order**BEAM_EXPONENT
-    fallen = np.exp(-((aside[:, None] / (width6 * W6_TO_W)) ** 2))
+    along = z_m * (np.cos(plane.theta) - 1) - x_m * np.sin(plane.theta)
+    spread = c.distance_m / (c.distance_m + along)
+    fallen = np.exp(-((aside[:, None] / beam_w(plane.frequencies_hz, c)) ** 2)) * spread[:, None]
     return replace(plane, theta=plane.theta - aside / c.distance_m, amplitude=plane.amplitude / fallen)
 
 

@@ -19,7 +19,7 @@ from numpy.typing import NDArray
 Vector = NDArray[np.float64]
 TIMING_FLOOR_S = 2e-11  # trigger jitter and sampling clock leave at least this much
 COLUMNS = 4
-SCALE_U = 5e-4  # relative: speed of sound from a thermometer within 0.2 °C, scale of the rotation axis
+SCALE_U = 2e-3  # relative to the whole offset: speed of sound, scale of the rotation axis, slope of the beam
 
 
 @dataclass(frozen=True)
@@ -100,7 +100,7 @@ class PivotFit:
         # the source or less (plane), so half of it is put right, and the whole range is uncertainty (rectangular)
         bend = np.array([x * z, z**2 - x**2]) / self.distance_m if self.distance_m > 0 else np.zeros(2)
         x, z = x + bend[0] / 2, z + bend[1] / 2
-        model = bend**2 / 12 + (SCALE_U * np.array([x, z])) ** 2
+        model = bend**2 / 12 + SCALE_U**2 * (x**2 + z**2)
         return PivotEstimate(
             x_m=float(x),
             z_m=float(z),

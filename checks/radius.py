@@ -9,12 +9,12 @@ property of the element.
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
-from checks.directivity import PlaneResponse, half_angle
+from checks.directivity import PlaneResponse, beam_w, half_angle
 from checks.element import (
     EDGES,
     Edge,
@@ -25,6 +25,7 @@ from checks.element import (
     radius_from_angle,
 )
 from checks.errors import MeasurementError
+from checks.observation import Circumstances
 
 Vector = NDArray[np.float64]
 CANNOT_TELL = 6.0  # difference of the criterion below which two behaviours are not told apart
@@ -39,6 +40,7 @@ class RadiusFit:
         angle_zero: rad, true zero as the stage counts, with its standard uncertainty.
         reduced_chi2: of the fit; uncertainties are scaled by its root where it exceeds 1.
         criterion: corrected Akaike criterion; smaller is better.
+        model_u_m: the part of `radius_u_m` that all frequencies have in common.
     """
 
     edge: Edge
@@ -51,6 +53,7 @@ class RadiusFit:
     reduced_chi2: float
     criterion: float
     points: int
+    model_u_m: Vector = field(default_factory=lambda: np.zeros(0))
 
 
 def fit_edges(plane: PlaneResponse, speed_m_s: float, nominal_radius_m: float) -> list[RadiusFit]:
@@ -138,6 +141,20 @@ def _fit(plane: PlaneResponse, lines: NDArray[np.intp], speed_m_s: float, nomina
         criterion=total * float(np.log(max(chi2, 1e-300) / total)) + penalty,
         points=total,
     )
+
+
+def in_a_real_beam(fit: RadiusFit, c: Circumstances) -> RadiusFit:
+    """The fit with what a real beam does to the radius: it is no plane wave over the element.
+
+    Across the face the amplitude falls as exp(-r²/w²), which makes the element look smaller by up to a²/(12 w²) (from
+    the second moment of the weighted face, derived); half of it is put right, all of it is uncertainty (rectangular).
+    And the source is seen under an angle of a_s/L, whose square over two bounds what the spread of directions does.
+    """
+    taper = fit.radius_m**2 / (12 * beam_w(fit.frequencies_hz, c) ** 2)
+    seen = (c.source_radius_m / c.distance_m) ** 2 / 2 if c.focal_length_m is None else 0.0
+    radius = fit.radius_m * (1 + taper / 2)
+    model = radius * np.sqrt(taper**2 / 12 + seen**2 / 3)
+    return replace(fit, radius_m=radius, radius_u_m=np.hypot(fit.radius_u_m, model), model_u_m=model)
 
 
 @dataclass(frozen=True)

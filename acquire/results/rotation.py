@@ -14,7 +14,16 @@ from checks.directivity import HalfAngle, PlaneResponse, half_angle, plane_respo
 from checks.element import Edge
 from checks.observation import Circumstances, Observation
 from checks.pivot import PivotEstimate, fit_pivot
-from checks.radius import AngleRadius, RadiusFit, RadiusLaw, fit_edges, fit_law, radii_from_angles, told_apart
+from checks.radius import (
+    AngleRadius,
+    RadiusFit,
+    RadiusLaw,
+    fit_edges,
+    fit_law,
+    in_a_real_beam,
+    radii_from_angles,
+    told_apart,
+)
 from checks.water import speed_of_sound
 
 LEVELS_DB = (-3.0, -6.0)
@@ -75,6 +84,7 @@ def _plane_result(
         uncorrected = {fit.edge: fit for fit in fits}
         response = seen_from_the_source(response, pivot.x_m, pivot.z_m, circumstances)
         fits = [wider(f, uncorrected[f.edge]) for f in fit_edges(response, speed, circumstances.nominal_radius_m)]
+    fits = [in_a_real_beam(f, circumstances) for f in fits]
     usable = np.nonzero(response.usable)[0]
     halves = {(int(n), level): half_angle(response, int(n), level) for n in usable for level in LEVELS_DB}
     return PlaneResult(response, halves, fits, radii_from_angles(response, speed), fit_law(fits[0]), pivot, speed)
@@ -86,8 +96,9 @@ def wider(fit: RadiusFit, uncorrected: RadiusFit) -> RadiusFit:
     def grown(u: NDArray[np.float64], change: NDArray[np.float64]) -> NDArray[np.float64]:
         return np.asarray(np.hypot(u, np.abs(change) / np.sqrt(3)))
 
-    radius_u = grown(fit.radius_u_m, fit.radius_m - uncorrected.radius_m)
-    zero_u = grown(np.array(fit.angle_zero_u), np.array(fit.angle_zero - uncorrected.angle_zero))
+    # half of what was put right stays open (rectangular over the whole of it, centred)
+    radius_u = grown(fit.radius_u_m, (fit.radius_m - uncorrected.radius_m) / 2)
+    zero_u = grown(np.array(fit.angle_zero_u), np.array(fit.angle_zero - uncorrected.angle_zero) / 2)
     return replace(fit, radius_u_m=radius_u, angle_zero_u=float(zero_u))
 
 
@@ -174,13 +185,16 @@ def _radii(r: PlaneResult, plane: dict[str, float]) -> list[Quantity]:
 
 
 def mean_radius(r: PlaneResult) -> tuple[float, float]:
-    """Weighted mean of the radii over frequency, and its standard uncertainty with their scatter in it."""
+    """Weighted mean of the radii over frequency; what the frequencies have in common does not average out."""
     fit = r.best
-    weight = 1 / (fit.radius_u_m**2 + (1e-4 * fit.radius_m) ** 2)
-    mean = float(weight @ fit.radius_m / weight.sum())
-    inner = 1 / float(weight.sum())
-    scatter = float(weight @ (fit.radius_m - mean) ** 2 / weight.sum()) / max(1, fit.radius_m.size - 1)
-    return mean, sqrt(max(inner, scatter) + (SPEED_U * mean) ** 2)
+    weight = 1 / np.maximum(fit.radius_u_m, 1e-4 * fit.radius_m) ** 2
+    weight = weight / weight.sum()
+    mean = float(weight @ fit.radius_m)
+    own = fit.radius_u_m**2 - fit.model_u_m**2
+    inner = float(weight**2 @ np.maximum(own, 0.0))
+    scatter = float(weight @ (fit.radius_m - mean) ** 2) / max(1, fit.radius_m.size - 1)
+    common = float(weight @ fit.model_u_m)
+    return mean, sqrt(max(inner, scatter) + common**2 + (SPEED_U * mean) ** 2)
 
 
 def _geometry(r: PlaneResult, plane: dict[str, float], circumstances: Circumstances) -> list[Quantity]:
