@@ -33,7 +33,15 @@ MISTAKES = {
     "NotAStore",
     "UserMistake",
 }
-FAILURES = {"DaemonSilent", "BenchUnusable", "RecorderFailed", "ProcessFailed", "DriverError", "ScanFailed"}
+FAILURES = {
+    "DaemonSilent",
+    "BenchUnusable",
+    "RecorderFailed",
+    "ProcessFailed",
+    "DriverError",
+    "ScanFailed",
+    "ReplayDiffers",
+}
 
 
 def main() -> None:

@@ -1,0 +1,128 @@
+"""From a store to the report."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from acquire.report import figures
+from acquire.report.page import Picture, findings, page, picture, section, table
+from acquire.results import raster, rotation
+from acquire.results.quantity import Quantity, written
+from acquire.results.summary import SHOWN, conditions
+from acquire.store import StoredScan
+from checks.observation import Observation
+
+LISTED = (
+    "mean effective radius",
+    "effective radius at high frequency",
+    "angle zero",
+    "pivot offset",
+    "beamwidth",
+    "beam peak",
+    "share of the peak read",
+    "positive peak",
+    "negative peak",
+)
+
+
+def report(stored: StoredScan) -> str:
+    """The whole page.
+
+    Raises:
+        MeasurementError: the data do not suffice for any result; one line.
+    """
+    c, seen = stored.circumstances, stored.observations()
+    quantities: list[Quantity]
+    if c.scan_type == "rotation":
+        results = rotation.rotation_results(seen, c)
+        quantities = rotation.quantities(results, c)
+        usable = results[0].response.frequencies_hz[results[0].response.usable]
+        parts = rotation_sections(stored, results)
+    else:
+        from acquire.report.raster import sections
+
+        result = raster.raster_result(seen, c)
+        quantities = raster.quantities(result, c)
+        usable = c.frequencies_hz
+        parts = sections(result)
+    return page(
+        stored.job.scan.title or stored.job.scan.name,
+        subtitle(stored),
+        section("Findings", findings(stored.findings())),
+        section("Numbers", numbers(quantities)),
+        *parts,
+        section("Reference point", picture(_reference(stored, seen, usable))),
+        section("Scan", table(("", ""), circumstances_rows(stored))),
+    )
+
+
+def rotation_sections(stored: StoredScan, results: Sequence[rotation.PlaneResult]) -> list[str]:
+    """Sections of a rotation."""
+    from acquire.report.rotation import sections
+
+    return sections(results, stored.job.sensor.nominal_radius_mm)
+
+
+def subtitle(stored: StoredScan) -> str:
+    """What was measured, when, and whether it is complete."""
+    a = stored.attributes
+    state = "sealed" if stored.sealed else f"broken off after {len(stored.records)} points"
+    return (
+        f"sensor {stored.job.sensor.name}, source {stored.job.source.name}, bench {stored.job.bench.name}; "
+        f"started {a['started_utc']}, {state}; truepivot {a['program_version']}"
+    )
+
+
+def numbers(quantities: Sequence[Quantity]) -> str:
+    """The main quantities as a table."""
+    rows = []
+    for q in quantities:
+        if q.name in LISTED:
+            unit, factor = SHOWN.get(q.unit, (q.unit, 1.0))
+            value = written(q.value, q.standard_uncertainty, factor)
+            rows.append((q.name, conditions(q), f"{value} {unit}" if q.value is not None else "none", q.method))
+    return table(("quantity", "conditions", "value ± standard uncertainty", "method"), rows)
+
+
+def _reference(stored: StoredScan, seen: Sequence[Observation], usable_hz: Any) -> Picture:
+    """Waveform and spectrum of the first reference point, or of the strongest point where there is none."""
+    strongest = max(seen, key=lambda o: o.square_integral_v2s)
+    chosen = next((o for o in seen if o.reference), strongest)
+    record, c = stored.records[chosen.index], stored.circumstances
+    volts = stored.counts(chosen.index) * record.volts_per_count + record.volts_at_zero - chosen.offset_v
+    time = record.start_s + np.arange(volts.size, dtype=np.float64) * record.interval_s
+    spectrum = np.abs(np.fft.rfft(volts * np.hanning(volts.size)))
+    frequency = np.fft.rfftfreq(volts.size, record.interval_s)
+    shown = frequency <= min(1.5 * c.frequencies_hz[-1], frequency[-1])
+    level = 20 * np.log10(np.maximum(spectrum[shown], 1e-12 * spectrum.max()) / spectrum.max())
+    gate_us = (float(time[c.gate.start]) * 1e6, float(time[min(c.gate.stop, time.size - 1)]) * 1e6)
+    figure = figures.waveform_and_spectrum(
+        time * 1e6, volts, gate_us, frequency[shown] / 1e6, level, np.asarray(usable_hz) / 1e6
+    )
+    what = "first reference point" if chosen.reference else "strongest point"
+    return Picture(f"Waveform and spectrum of the {what} (point {chosen.index}).", figures.png(figure))
+
+
+def circumstances_rows(stored: StoredScan) -> list[tuple[str, str]]:
+    """How the scan was done."""
+    c, scan = stored.circumstances, stored.job.scan
+    warm = [r.temperature_c for r in stored.records]
+    return [
+        ("points", f"{len(stored.records)} of {c.planned_points}"),
+        ("distance", f"{c.distance_m * 1e3:.2f} mm"),
+        ("drive", f"{c.drive_hz / 1e6:g} MHz, {c.cycles} cycles, {stored.job.source.drive_v:g} V peak to peak"),
+        ("averages", str(scan.capture.averages)),
+        ("vertical range", f"{scan.capture.full_scale_v:g} V"),
+        ("water", f"{min(warm):.2f} to {max(warm):.2f} °C"),
+        ("pivot correction", f"x {c.pivot_x_m * 1e3:.3f} mm, z {c.pivot_z_m * 1e3:.3f} mm"),
+        ("convention", rotation.CONVENTION),
+    ]
+
+
+def write_report(stored: StoredScan, path: Path) -> None:
+    """Write the page to a file."""
+    path.write_text(report(stored), "utf-8")
