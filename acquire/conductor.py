@@ -77,6 +77,7 @@ class Conductor:
         self._answer_due = False
         self._source_on = False
         self._reconnects = 0
+        self._there: PlanPoint | None = None  # where the stage stands already, before the first point
         self.done = 0
         self.planned = 0
 
@@ -155,6 +156,7 @@ class Conductor:
             stage.home(HOMING_S, self._control.stop_asked)
         self._start(plan.points[0])
         self._arrive(plan.points[0])
+        self._there = plan.points[0]
 
     def _choose_range(self, wanted: CaptureSettings) -> CaptureSettings:
         """The range of the scan, or the one that the first point asks for."""
@@ -179,7 +181,7 @@ class Conductor:
         first = self.done
         self._state("running")
         try:
-            if points:
+            if points and points[0] is not self._there:
                 self._start(points[0])
             for at, point in enumerate(points):
                 self._between(recorder)
@@ -221,7 +223,8 @@ class Conductor:
                 self._start(point)
 
     def _point(self, point: PlanPoint, following: PlanPoint | None, started: float) -> tuple[PointRecord, Trace]:
-        before = self._arrive(point)
+        before = self._where(self._i.stage.position()) if point is self._there else self._arrive(point)
+        self._there = None
         if self._job.scan.capture.dwell_ms:
             sleep(self._job.scan.capture.dwell_ms * MS)
         scope = self._i.scope
