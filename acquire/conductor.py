@@ -44,6 +44,7 @@ THERMOMETER_S = 0.05
 PROGRESS_EVERY_S = 0.2
 RECONNECTS = 3
 HOLD_LOOKS_S = 0.05
+SWITCH_OFF_TRIES, SWITCH_OFF_PAUSE_S = 4, 1.0
 
 Publish = Callable[[Event], None]
 
@@ -98,7 +99,7 @@ class Conductor:
         try:
             return self._prepared_run(continue_store)
         finally:
-            self._switch_source(False)
+            self._make_sure_it_is_off()
 
     # --- before the first point -------------------------------------------------------------------------
 
@@ -344,6 +345,19 @@ class Conductor:
             generator.recover()
         generator.output(on)
         self._source_on = on
+
+    def _make_sure_it_is_off(self) -> None:
+        """Whatever happened before: an instrument that does not answer is asked again over a new connection."""
+        for attempt in range(SWITCH_OFF_TRIES):
+            try:
+                self._switch_source(False)
+            except DriverError as error:
+                failure = error
+                self._publish(Notice(text=f"the source does not go off ({error}); trying again"))
+                sleep(attempt * SWITCH_OFF_PAUSE_S)
+            else:
+                return
+        raise DriverError(f"THE SOURCE COULD NOT BE SWITCHED OFF, do it by hand now ({failure})")
 
     def _repair(self) -> None:
         """Make every link that is out of step anew; the source may have gone off with it."""

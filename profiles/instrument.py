@@ -102,7 +102,7 @@ class Instrument(Profile):
     family: Family
     identity: str = Field(description="regular expression that the reply to the identity question must match")
     identify: str = Field(default="*IDN?", description="the identity question")
-    timeout_s: Positive = 2.0
+    timeout_s: Positive = 5.0
     terminator: Literal["\n", "\r\n", "\r"] = "\n"
     has_error_queue: bool = Field(default=True, description="answers SYSTem:ERRor?")
     commands: dict[str, str] = Field(default_factory=dict)

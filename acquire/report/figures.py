@@ -45,7 +45,7 @@ def response_against_angle(
     for level in (-3, -6):
         axes.axhline(level, color="0.8", linewidth=0.8, zorder=0)
     axes.set(xlabel="angle / °", ylabel="level re angle zero / dB", ylim=(FLOOR_DB, 2))
-    axes.legend(fontsize="small", ncols=3)
+    axes.legend(fontsize="small", ncols=5, loc="lower center", bbox_to_anchor=(0.5, 1.0), frameon=False)
     return figure
 
 
@@ -123,7 +123,12 @@ def radius_against_frequency(
         **style,
     )
     axes.axhline(nominal_mm, color="0.7", linewidth=0.8, linestyle=":", label="nominal")
-    axes.set(xlabel="frequency / MHz", ylabel="effective radius / mm", ylim=(0, None))
+    middle = float(np.nanmedian(by_fit[0]))
+    reach = 1.3 * max(
+        0.05 * middle, abs(nominal_mm - middle), float(np.nanmax(np.abs(by_angles[0] - middle), initial=0.0))
+    )
+    reach = min(reach, 0.6 * middle)
+    axes.set(xlabel="frequency / MHz", ylabel="effective radius / mm", ylim=(middle - reach, middle + reach))
     axes.legend(fontsize="small")
     return figure
 
