@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -42,12 +42,15 @@ class RasterResult:
 
 
 def raster_result(seen: Sequence[Observation], circumstances: Circumstances) -> RasterResult:
-    """Result of a raster; reference revisits are left out.
+    """Result of a raster; of several visits to a place the first one counts.
 
     Raises:
         MeasurementError: nothing moved.
     """
-    points = [o for o in seen if not o.reference] or list(seen)
+    first: dict[tuple[float, ...], Observation] = {}
+    for o in seen:
+        first.setdefault(tuple(round(v, 9) for v in (o.commanded.x, o.commanded.y, o.commanded.z)), o)
+    points = list(first.values())
     places = np.array([(o.commanded.x, o.commanded.y, o.commanded.z) for o in points])
     moving = [i for i in range(3) if np.ptp(places[:, i]) > 1e-9]
     if not moving:
@@ -61,7 +64,9 @@ def raster_result(seen: Sequence[Observation], circumstances: Circumstances) -> 
     sigma = noise * np.sqrt(circumstances.sample_interval_s)
     peak = _peak(places, amplitude, moving)
     at = places[np.argmax(amplitude)]
-    widths = {AXES[i]: _width(places, amplitude, sigma, i, moving, at) for i in moving}
+    reported = np.array([(o.reported_before.x, o.reported_before.y, o.reported_before.z) for o in points])
+    scatter = np.sqrt(np.mean((reported - places) ** 2, axis=0))
+    widths = {AXES[i]: _width(places, amplitude, sigma, i, moving, at, float(scatter[i])) for i in moving}
     steps = tuple(float(np.median(np.diff(np.unique(np.round(places[:, i], 9))))) for i in moving)
     return RasterResult(
         axes=tuple(moving),
@@ -86,14 +91,30 @@ def _peak(places: Array, amplitude: Array, moving: list[int]) -> Peak | None:
         return None
 
 
-def _width(places: Array, amplitude: Array, sigma: Array, axis: int, moving: list[int], at: Array) -> Width | str:
-    """Along the line of points that runs in `axis` through the place of the largest level."""
+def _width(
+    places: Array, amplitude: Array, sigma: Array, axis: int, moving: list[int], at: Array, scatter_m: float
+) -> Width | str:
+    """Along the line of points that runs in `axis` through the place of the largest level.
+
+    Its uncertainty holds the noise, the scatter of the stage, and what the spline makes of the steps: a fifteenth of
+    what leaving out every other point changes, for a rule of the fourth order.
+    """
     others = [i for i in moving if i != axis]
     rows = np.all(np.abs(places[:, others] - at[others]) < 1e-9, axis=1) if others else np.ones(len(places), bool)
+    order = np.argsort(places[rows, axis])
+    x, y, s = places[rows, axis][order], amplitude[rows][order], sigma[rows][order]
     try:
-        return width_of(places[rows, axis], amplitude[rows], sigma[rows])
+        width = width_of(x, y, s)
     except MeasurementError as error:
         return str(error)
+    start = int(np.argmax(y)) % 2
+    try:
+        coarse = width_of(x[start::2], y[start::2], s[start::2]).width_m
+    except MeasurementError:
+        coarse = 2 * width.width_m
+    steps = abs(coarse - width.width_m) / 15
+    u = np.sqrt(width.standard_uncertainty_m**2 + 2 * scatter_m**2 + steps**2)
+    return replace(width, standard_uncertainty_m=float(u))
 
 
 def quantities(result: RasterResult, circumstances: Circumstances) -> list[Quantity]:
