@@ -41,7 +41,9 @@ HOMING_S = 300.0
 MOVE_S = 120.0
 SLACK_S = 3.0  # beyond the time that the triggers of a capture take
 THERMOMETER_S = 0.05
+TEMPERATURE_EVERY = 5  # points
 PROGRESS_EVERY_S = 0.2
+EVENTS_EVERY_S = 0.01
 RECONNECTS = 3
 HOLD_LOOKS_S = 0.05
 SWITCH_OFF_TRIES, SWITCH_OFF_PAUSE_S = 4, 1.0
@@ -178,7 +180,7 @@ class Conductor:
     # --- the points -------------------------------------------------------------------------------------
 
     def _visit(self, points: tuple[PlanPoint, ...], recorder: Recorder, settings: CaptureSettings) -> bool:
-        started = told = monotonic()
+        started = told = heard = monotonic()
         first = self.done
         self._state("running")
         try:
@@ -192,10 +194,14 @@ class Conductor:
                     raise DriverError("the vertical range changed during the scan: leave the panel alone")
                 recorder.put(record, trace.counts)
                 self.done += 1
-                self._pass_on(recorder.poll())
-                if monotonic() - told >= PROGRESS_EVERY_S:
-                    told = monotonic()
+                now = monotonic()
+                if now - heard >= EVENTS_EVERY_S:
+                    heard = now
+                    self._pass_on(recorder.poll())
+                if now - told >= PROGRESS_EVERY_S:
+                    told = now
                     self._progress(started, first)
+            self._pass_on(recorder.poll())
             self._between(recorder)
         except (Stopped, Cancelled):
             self._state("stopping", self._control.reason)
@@ -232,11 +238,15 @@ class Conductor:
         scope.arm()
         scope.wait(self._capture_timeout_s(), self._control.stop_asked)
         captured = monotonic()
-        after = self._where(self._i.stage.position())
-        self._look_after_temperature(first=point.index == 0)
+        stage = self._i.stage
+        stage.ask_position()  # both are asked before either answer is awaited
+        scope.ask_samples()
+        after = self._where(stage.read_position())
         if following is not None:
             self._start(following)
-        trace = scope.read()
+        if point.index % TEMPERATURE_EVERY == 0:
+            self._look_after_temperature(first=point.index == 0)
+        trace = scope.read_samples()
         return self._record(point, before, after, captured - started, trace), trace
 
     def _record(self, point: PlanPoint, before: Where, after: Where, time_s: float, trace: Trace) -> PointRecord:

@@ -94,7 +94,6 @@ class Recorder:
         Raises:
             RecorderFailed: it has failed, or does not go on.
         """
-        self._receive()
         deadline = monotonic() + STALL_S
         while not self._free:
             if monotonic() > deadline:

@@ -71,6 +71,14 @@ class Oscilloscope(Instrument, Protocol):
         """Fetch the capture. The returned counts are not overwritten by the next read."""
         ...
 
+    def ask_samples(self) -> None:
+        """Send the question for the capture only, so that another instrument can be asked meanwhile."""
+        ...
+
+    def read_samples(self) -> Trace:
+        """The answer to `ask_samples`."""
+        ...
+
     def full_scales_v(self) -> tuple[float, ...]:
         """Ranges that can be set, ascending."""
         ...
@@ -95,6 +103,14 @@ class Stage(Instrument, Protocol):
 
     def position(self) -> dict[Axis, float]:
         """Reported position."""
+        ...
+
+    def ask_position(self) -> None:
+        """Send the question only, so that another instrument can be asked meanwhile."""
+        ...
+
+    def read_position(self) -> dict[Axis, float]:
+        """The answer to `ask_position`."""
         ...
 
     def stop(self) -> None:

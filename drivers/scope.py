@@ -107,15 +107,23 @@ class ScpiScope(ScpiInstrument):
                 "generator's output on, and its sync line connected?"
             ) from error
 
+    def ask_samples(self) -> None:
+        """Send the question for the samples only, so that another instrument can be asked meanwhile."""
+        self.send("samples")
+
     def read(self) -> Trace:
-        """Fetch the capture: counts shape (points,), int8 or int16.
+        """Fetch the capture: counts shape (points,), int8 or int16."""
+        self.ask_samples()
+        return self.read_samples()
+
+    def read_samples(self) -> Trace:
+        """The answer to `ask_samples`.
 
         Raises:
             ProtocolError: length or scaling are not what was set up.
         """
         if self._settings is None:
             raise ProtocolError("the oscilloscope was not set up before it was read")
-        self.send("samples")
         counts = decode(self.link.read_block(), self._transfer)
         if counts.size != self._settings.points:
             raise ProtocolError(

@@ -2,10 +2,14 @@
 
 from __future__ import annotations
 
+import os
+import select
 from typing import Any
 
 from drivers.errors import CannotConnect
 from drivers.link import Link
+
+CHUNK = 1 << 16
 
 
 class SerialLink(Link):
@@ -27,6 +31,8 @@ class SerialLink(Link):
                 f"cannot open {self._device} ({error}); is it plugged in, and may this user open it?"
             ) from error
         self._port.reset_input_buffer()
+        self._poll = select.poll()
+        self._poll.register(self._port.fd, select.POLLIN)
 
     def _disconnect(self) -> None:
         if self._port is not None:
@@ -34,23 +40,29 @@ class SerialLink(Link):
             self._port = None
 
     def _send(self, data: bytes) -> None:
-        if self._port is None:
-            raise self._lost("is not connected")
+        port = self._open_port()
         try:
-            self._port.write(data)
+            if len(data) != os.write(port.fd, data):
+                port.write(data)  # never seen: so few bytes always fit
+        except BlockingIOError:
+            port.write(data)
         except OSError as error:
             raise self._lost(f"sending failed ({error})") from error
 
     def _receive(self, timeout_s: float) -> bytes:
-        if self._port is None:
-            raise self._lost("is not connected")
+        """One wait and one read on pyserial's own descriptor: half the system calls of its `read`."""
+        port = self._open_port()
         try:
-            waiting = self._port.in_waiting
-            if not waiting:
-                self._port.timeout = timeout_s
-                first: bytes = self._port.read(1)
-                return first + self._port.read(self._port.in_waiting) if first else b""
-            data: bytes = self._port.read(waiting)
-            return data
+            if not self._poll.poll(timeout_s * 1e3):
+                return b""
+            data = os.read(port.fd, CHUNK)
         except (OSError, TypeError) as error:  # a port that vanished raises either
             raise self._lost(f"the port is gone ({error})") from error
+        if not data:
+            raise self._lost("the port is gone")
+        return data
+
+    def _open_port(self) -> Any:
+        if self._port is None:
+            raise self._lost("is not connected")
+        return self._port

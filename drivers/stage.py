@@ -88,9 +88,18 @@ class MotionStage(ABC):
     def _accepted(self, timeout_s: float, cancelled: StopAsked | None) -> None:
         """See that the move was taken; `InstrumentError` if it was refused."""
 
-    @abstractmethod
     def _report(self) -> Report:
         """Ask where it is; `InstrumentError` if it is in alarm."""
+        self._ask_reports(1)
+        return self._read_report()
+
+    @abstractmethod
+    def _ask_reports(self, count: int) -> None:
+        """Send the question for so many reports."""
+
+    @abstractmethod
+    def _read_report(self) -> Report:
+        """One of the reports that were asked for."""
 
     @abstractmethod
     def _home(self, timeout_s: float, cancelled: StopAsked | None) -> None:
@@ -165,16 +174,14 @@ class MotionStage(ABC):
         """
         start = monotonic()
         self._accepted(timeout_s, cancelled)
-        alike: list[Report] = []
         while True:
             report = self._report()
-            if not report.done or (alike and not self._alike(alike[0], report)):
-                alike.clear()
             if report.done:
-                alike.append(report)
-                if len(alike) >= REPORTS_WANTED:
+                self._ask_reports(REPORTS_WANTED - 1)
+                more = [self._read_report() for _ in range(REPORTS_WANTED - 1)]
+                if all(r.done and self._alike(report, r) for r in more):
+                    report = more[-1]
                     break
-                continue
             gone = monotonic() - start
             if cancelled is not None and cancelled():
                 self.stop()
@@ -190,6 +197,14 @@ class MotionStage(ABC):
     def position(self) -> dict[Axis, float]:
         """Reported position, metres and radians."""
         return self._report().position
+
+    def ask_position(self) -> None:
+        """Send the question only, so that another instrument can be asked meanwhile."""
+        self._ask_reports(1)
+
+    def read_position(self) -> dict[Axis, float]:
+        """The answer to `ask_position`."""
+        return self._read_report().position
 
     def stop(self) -> None:
         """Stop every axis at once."""

@@ -63,8 +63,10 @@ class IsoStage(MotionStage):
     def _accepted(self, timeout_s: float, cancelled: StopAsked | None) -> None:
         self._until_ok(timeout_s, cancelled)
 
+    def _ask_reports(self, count: int) -> None:
+        self.link.write_raw(b"?" * count)
+
     def _state(self) -> tuple[str, dict[Axis, float]]:
-        self.link.write_raw(b"?")
         reply = self.link.read_line()
         match = REPORT.match(reply)
         if not match:
@@ -72,7 +74,7 @@ class IsoStage(MotionStage):
         values = dict(zip(ORDER, (float(v) for v in match[2].split(",")), strict=False))
         return match[1], {axis: values[self._words[axis]] * unit_of(axis) for axis in self.axes}
 
-    def _report(self) -> Report:
+    def _read_report(self) -> Report:
         state, position = self._state()
         if state == "Alarm":
             raise InstrumentError("the stage is in alarm, its position may be lost: home it")
@@ -80,6 +82,7 @@ class IsoStage(MotionStage):
 
     def referenced(self) -> bool:
         """Whether it is free of an alarm."""
+        self._ask_reports(1)
         return self._state()[0] != "Alarm"
 
     def _home(self, timeout_s: float, cancelled: StopAsked | None) -> None:

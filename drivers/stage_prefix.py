@@ -45,16 +45,19 @@ class PrefixStage(MotionStage):
         except ValueError as error:
             raise ProtocolError(f"the stage answered {replies!r} to {question}") from error
 
-    def _report(self) -> Report:
+    def _ask_reports(self, count: int) -> None:
         words = [self._words[axis] for axis in self.axes]
-        self.link.write(";".join([*(f"{w}TP?" for w in words), *(f"{w}MD?" for w in words)]))
-        replies = [self.link.read_line() for _ in range(2 * len(words))]
+        question = [*(f"{w}TP?" for w in words), *(f"{w}MD?" for w in words)]
+        self.link.write(";".join(question * count))
+
+    def _read_report(self) -> Report:
+        replies = [self.link.read_line() for _ in range(2 * len(self.axes))]
         try:
             numbers = [float(r) for r in replies]
         except ValueError as error:
             raise ProtocolError(f"the stage answered {replies!r} when it was asked where it is") from error
         position = {axis: n * unit_of(axis) for axis, n in zip(self.axes, numbers, strict=False)}
-        return Report(position, all(numbers[len(words) :]))
+        return Report(position, all(numbers[len(self.axes) :]))
 
     def referenced(self) -> bool:
         """Whether every axis has been homed."""

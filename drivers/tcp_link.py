@@ -52,7 +52,7 @@ class TcpLink(Link):
     def _receive(self, timeout_s: float) -> bytes:
         connection = self._open_socket()
         try:
-            connection.settimeout(timeout_s)
+            connection.settimeout(max(timeout_s, 1e-4))
             data = connection.recv(CHUNK)
         except TimeoutError:
             return b""
