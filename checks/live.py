@@ -19,7 +19,7 @@ def make_checks(circumstances: Circumstances) -> list[Check]:
     """New checks for a scan; the same circumstances give checks that say the same of the same points."""
     rate = FALSE_ALARMS_PER_SCAN / max(1, circumstances.planned_points)
     checks: list[Check] = [
-        RangeCheck(circumstances),
+        RangeCheck(),
         SignalCheck(circumstances),
         MotionCheck(circumstances),
         DriftCheck(circumstances, rate),

@@ -10,12 +10,14 @@ from numpy.typing import NDArray
 
 from checks.finding import Change, Finding, Severity, Size
 from checks.observation import Circumstances, Observation
-from checks.standing import Standing
+from checks.standing import Standing, due
 from checks.wording import deg
 
 TERMS = 5  # 1, s, s², s³, s⁴ with s = sin(theta)
 MAIN_LOBE_DB = -8.0
 FEWEST = 12
+WORST_CONDITION = 1e9
+MODEL_U = 0.02  # relative: what the fourth power leaves of the pattern, most where the sides are not yet equal
 WORTH_SAYING = radians(0.15)
 MATTERS = radians(0.5)
 BALANCED = 0.8  # one side must reach so far of what the other does: an odd part needs both
@@ -30,27 +32,37 @@ class AngleCheck:
     their weights. Statistic: theta0 over its standard uncertainty, which holds the scatter of the residuals; for a
     bench in order it is Student's t. Threshold: false alarms per scan shared out over points (by the bound
     (1 + t²/n)^(-n/2) on its two-sided tail). It speaks from 0.15° on; the result takes angle zero from its own fit.
+    Each plane of rotation begins anew.
     """
 
     def __init__(self, circumstances: Circumstances, false_alarm_rate: float) -> None:
-        lines = circumstances.frequencies_hz.size
+        self._lines = circumstances.frequencies_hz.size
         self._rate = false_alarm_rate
+        self._plane: int | None = None
+        self._begin()
+
+    def _begin(self) -> None:
+        lines = self._lines
         self._normal = np.zeros((lines, TERMS, TERMS))
         self._moment = np.zeros((lines, TERMS))
         self._square = np.zeros(lines)
         self._count = np.zeros(lines, np.int64)
         self._reference: NDArray[np.float64] | None = None
-        self._largest = np.zeros(lines)
         self._reached = np.zeros((lines, 2))  # largest |s| on either side
         self._standing = Standing()
-        self._points = 0
+        self._points = self._first = 0
 
     def update(self, seen: Observation) -> Iterable[Change]:
         """One more point."""
+        changes: list[Change] = []
+        if seen.plane != self._plane:
+            changes += self._standing.last_word()
+            self._begin()
+            self._plane, self._first = seen.plane, seen.index
         strength = np.abs(seen.components)
         if self._reference is None:
             if not seen.reference and abs(seen.commanded.theta) > 1e-3:
-                return []
+                return changes
             self._reference = np.maximum(strength, 1e-300)
         self._points += 1
         relative = strength / self._reference
@@ -63,16 +75,15 @@ class AngleCheck:
         self._moment += log[:, None] * row
         self._square += log**2
         self._count += usable
-        self._largest = np.maximum(self._largest, keep * abs(s))
         side = int(s > 0)
         self._reached[:, side] = np.maximum(self._reached[:, side], keep * abs(s))
-        if self._points < FEWEST or seen.reference:
-            return []
-        return self._standing.now(self._finding(seen.index), seen.index)
+        if self._points >= FEWEST and due(self._points):
+            changes += self._standing.now(self._finding(seen.index), seen.index)
+        return changes
 
     def finish(self) -> Iterable[Change]:
-        """Nothing more to say."""
-        return []
+        """The last size."""
+        return self._standing.last_word()
 
     def _finding(self, at: int) -> Finding | None:
         estimate = self._estimate()
@@ -80,7 +91,8 @@ class AngleCheck:
             return None
         zero, u, freedom = estimate
         threshold = sqrt(freedom * (self._rate ** (-2 / freedom) - 1))
-        if abs(zero) < WORTH_SAYING or abs(zero) <= threshold * u:
+        ease = self._standing.ease
+        if abs(zero) < WORTH_SAYING * ease or abs(zero) <= threshold * u * ease:
             return None
         severity: Severity = "caution" if abs(zero) >= MATTERS else "note"
         return Finding(
@@ -88,7 +100,7 @@ class AngleCheck:
             severity=severity,
             summary=f"the pattern is even about {deg(zero, u)} and not about the stage's zero",
             sizes=(Size("angle zero", zero, u, "rad"),),
-            points=(0, at, self._points),
+            points=(self._first, at, self._points),
             consequence="half-angles differ between the sides, and radii from one side alone are wrong; the result "
             "fits angle zero and is free of it to first order",
             remedy=f"set the stage's zero at {degrees(zero):+.2f}°, or turn the sensor in its holder by as much",
@@ -96,29 +108,30 @@ class AngleCheck:
 
     def _estimate(self) -> tuple[float, float, int] | None:
         """theta0, its standard uncertainty, degrees of freedom; None while nothing can be said."""
-        weights, values, freedom = [], [], 0
-        both_sides = self._reached.min(axis=1) >= BALANCED * self._largest
-        for line in np.nonzero((self._count >= FEWEST) & both_sides)[0]:
-            scale = np.maximum(self._largest[line], 1e-6) ** np.arange(TERMS)
-            normal = self._normal[line] / np.outer(scale, scale)
-            if np.linalg.cond(normal) > 1e9:
-                continue
-            inverse = np.linalg.inv(normal)
-            c = inverse @ (self._moment[line] / scale)
-            if -c[2] < CURVED:
-                continue
-            left = int(self._count[line]) - TERMS
-            spread = max(float(self._square[line] - c @ (self._moment[line] / scale)), 1e-12) / left
-            zero = -c[1] / (2 * c[2]) * scale[1]
-            variance = spread * inverse[1, 1] / (2 * c[2]) ** 2 * scale[1] ** 2
-            variance += spread * inverse[2, 2] * (zero / c[2]) ** 2
-            weights.append(1 / variance)
-            values.append(zero)
-            freedom = max(freedom, left)
-        if not weights:
+        largest = self._reached.max(axis=1)
+        both_sides = self._reached.min(axis=1) >= BALANCED * largest
+        lines = np.nonzero((self._count >= FEWEST) & both_sides & (largest > 1e-6))[0]
+        if not lines.size:
             return None
-        w, v = np.array(weights), np.array(values)
+        scale = largest[lines, None] ** np.arange(TERMS)
+        normal = self._normal[lines] / (scale[:, :, None] * scale[:, None, :])
+        moment = self._moment[lines] / scale
+        values, vectors = np.linalg.eigh(normal)
+        values = np.maximum(values, 1e-300)
+        inverse = (vectors / values[:, None, :]) @ vectors.transpose(0, 2, 1)
+        c = (inverse @ moment[:, :, None])[:, :, 0]
+        good = (values[:, 0] * WORST_CONDITION > values[:, -1]) & (-c[:, 2] > CURVED)
+        if not good.any():
+            return None
+        lines, scale, moment, inverse, c = lines[good], scale[good], moment[good], inverse[good], c[good]
+        left = self._count[lines] - TERMS
+        spread = np.maximum(self._square[lines] - (c * moment).sum(axis=1), 1e-12) / left
+        zeros = -c[:, 1] / (2 * c[:, 2])
+        variance = spread * (inverse[:, 1, 1] / (2 * c[:, 2]) ** 2 + inverse[:, 2, 2] * (zeros / c[:, 2]) ** 2)
+        w, v = 1 / (variance * scale[:, 1] ** 2), zeros * scale[:, 1]
         zero = float(w @ v / w.sum())
         scatter = float(w @ (v - zero) ** 2) / max(1, v.size - 1)
         # lines share jitter and swing, so they are not independent: the best single line bounds the uncertainty
-        return zero, sqrt(max(1.0, scatter) / float(w.max())), freedom
+        best = int(np.argmax(w))
+        variance_of_zero = max(1.0, scatter) / float(w[best]) + (MODEL_U * zero) ** 2
+        return zero, sqrt(variance_of_zero), int(left[best])

@@ -44,8 +44,8 @@ class MotionCheck:
         return changes
 
     def finish(self) -> Iterable[Change]:
-        """Nothing more to say."""
-        return []
+        """The last tally."""
+        return [*self._off.standing.last_word(), *self._moving.standing.last_word()]
 
     def _off_target(self) -> Finding:
         t = self._off
@@ -79,7 +79,7 @@ class _Tally:
     """Points beyond the tolerance, and the largest departure."""
 
     def __init__(self) -> None:
-        self.standing = Standing()
+        self.standing = Standing(tally=True)
         self.linear = self.angular = 0.0
         self._first = self._last = self._count = 0
 

@@ -7,7 +7,7 @@ lines; a null of the element moves with angle so that f sin(theta) stays the sam
 from __future__ import annotations
 
 from collections.abc import Iterable
-from math import log10, pi, sin
+from math import log, log10, pi, sin
 
 import numpy as np
 from numpy.typing import NDArray
@@ -16,7 +16,7 @@ from checks.arrival import ArrivalTracker
 from checks.finding import Change, Finding, Size
 from checks.observation import Circumstances, Observation
 from checks.standing import Standing
-from checks.water import speed_of_sound
+from checks.water import speed_of_sound, speed_or
 from checks.wording import decibel, mhz, rounded
 
 FIRST_NULL = 3.8317059702  # first zero of J1
@@ -27,8 +27,10 @@ RIPPLE_EXPLAINS = 0.8
 SMOOTH_TERMS = 4  # 1, ln n (a steep wave falls as 1/n), n (preamplifier), n² (absorption)
 SLOWEST = 11  # of 64 delays: slower ripples cannot be told from the shape of the comb
 DELAYS = 64
-STRONG = 3.0
+CLEAR = 3.0
+STRONG = 10.0  # standard deviations at angle zero, for a line whose sign is believed
 LEAST_U = 0.02
+NARROW = 0.15  # the null is told once it is bracketed within this share of itself
 
 
 class SpectrumCheck:
@@ -46,6 +48,7 @@ class SpectrumCheck:
         self._power = np.zeros(self._frequencies.size)
         self._noise = np.zeros(self._frequencies.size)
         self._count = 0
+        self._ripples: _Ripples | None = None
         self._source = Standing()
         self._echo = Standing()
 
@@ -66,8 +69,8 @@ class SpectrumCheck:
         return [*changes, *self._source.now(self._say_source(dips, seen.index) if dips else None, seen.index)]
 
     def finish(self) -> Iterable[Change]:
-        """Nothing more to say."""
-        return []
+        """The last sizes."""
+        return [*self._echo.last_word(), *self._source.last_word()]
 
     def _dips(self, level: NDArray[np.float64], strong: NDArray[np.bool_]) -> list[tuple[int, float]]:
         """Lines that lie far below the straight line between their neighbours, where those are strong."""
@@ -80,26 +83,15 @@ class SpectrumCheck:
 
     def _ripple(self, level: NDArray[np.float64], strong: NDArray[np.bool_]) -> tuple[float, float] | None:
         """Amplitude in dB and delay in s (up to whole cycles) of a ripple over the strong lines, or None."""
-        lines = np.nonzero(strong)[0]
-        if lines.size < RIPPLE_LINES:
+        if np.count_nonzero(strong) < RIPPLE_LINES:
             return None
-        n = lines + 1.0
-        smooth = np.stack([np.ones_like(n), np.log(n), n / n.size, (n / n.size) ** 2], axis=1)
-        y = level[lines]
-        plain = y - smooth @ np.linalg.lstsq(smooth, y, rcond=None)[0]
-        total = float(plain @ plain)
-        best = (0.0, 0.0, 0.0)
-        for step in range(SLOWEST, DELAYS // 2 + 1):
-            turn = 2 * pi * step / DELAYS
-            model = np.hstack([smooth, np.cos(turn * n)[:, None], np.sin(turn * n)[:, None]])
-            solution = np.linalg.lstsq(model, y, rcond=None)[0]
-            rest = y - model @ solution
-            explained = 1 - float(rest @ rest) / max(total, 1e-30)
-            if explained > best[0]:
-                best = (explained, float(np.hypot(*solution[-2:])), step / DELAYS / self._drive_hz)
-        freedom = lines.size - SMOOTH_TERMS - 2
+        if self._ripples is None or not np.array_equal(self._ripples.strong, strong):
+            self._ripples = _Ripples(strong)
+        explained, amplitude, cycles = self._ripples.best(level)
+        freedom = np.count_nonzero(strong) - SMOOTH_TERMS - 2
         needed = 1 - (1 - RIPPLE_EXPLAINS) * min(1.0, freedom / RIPPLE_LINES)
-        return (best[1], best[2]) if best[0] >= needed and best[1] >= RIPPLE_DB else None
+        ease = self._echo.ease
+        return (amplitude, cycles / self._drive_hz) if explained >= needed and amplitude >= RIPPLE_DB * ease else None
 
     def _say_source(self, dips: list[tuple[int, float]], at: int) -> Finding:
         names = ", ".join(mhz(float(self._frequencies[i])) for i, _ in dips)
@@ -116,7 +108,7 @@ class SpectrumCheck:
 
     def _say_echo(self, ripple: tuple[float, float], at: int) -> Finding:
         amplitude, delay = ripple
-        level = 20 * log10(max(1e-6, (10 ** (amplitude / 20) - 1)))
+        level = 20 * log10(amplitude * log(10) / 20)  # ln|1 + r exp(i a)| = r cos a - ..., exactly r for r < 1
         return Finding(
             code="null.echo",
             severity="caution",
@@ -129,19 +121,56 @@ class SpectrumCheck:
         )
 
 
+class _Ripples:
+    """Least squares of all delays at once, for one choice of lines; K lines, D delays.
+
+    What the smooth terms cannot say is left (`plain`); the cosine and sine of each delay, the smooth terms taken off
+    them, span a plane each. The share that a delay explains is the squared length of `plain` within its plane.
+    """
+
+    def __init__(self, strong: NDArray[np.bool_]) -> None:
+        self.strong = strong
+        self._lines = np.nonzero(strong)[0]
+        n = self._lines + 1.0
+        smooth = np.stack([np.ones_like(n), np.log(n), n / n.size, (n / n.size) ** 2], axis=1)
+        self._smooth = np.linalg.qr(smooth)[0]
+        self._cycles = np.arange(SLOWEST, DELAYS // 2 + 1) / DELAYS
+        turn = 2 * pi * self._cycles[:, None] * n
+        waves = np.stack([np.cos(turn), np.sin(turn)], axis=2)  # (D, K, 2)
+        rest = waves - self._smooth @ (self._smooth.T @ waves)
+        # at a delay of half a cycle the sine is zero on every line, so a pseudo-inverse
+        self._inverse = np.linalg.pinv(rest, rcond=1e-6)  # (D, 2, K)
+        self._rest = rest
+
+    def best(self, level: NDArray[np.float64]) -> tuple[float, float, float]:
+        """Largest share explained (0 to 1), its amplitude in dB, its delay in cycles of the drive."""
+        y = level[self._lines]
+        plain = y - self._smooth @ (self._smooth.T @ y)
+        waves = self._inverse @ plain
+        said = (self._rest @ waves[:, :, None])[:, :, 0]
+        explained = (said**2).sum(axis=1) / max(float(plain @ plain), 1e-30)
+        i = int(np.argmax(explained))
+        return float(explained[i]), float(np.hypot(*waves[i])), float(self._cycles[i])
+
+
 class ElementNullCheck:
     """`null.element`: where the element does not hear, by its own size.
 
-    Model: the signed response crosses zero where f sin(theta) = 3.8317 c/(2 pi a). Statistic: over all lines, the
-    largest f sin(theta) with a positive and the smallest with a negative response, each three standard deviations
-    clear of zero. A note: the response is measured there, and it is none.
+    Model: the signed response crosses zero where f sin(theta) = 3.8317 c/(2 pi a). Statistic: over all lines that are
+    ten standard deviations clear of noise at angle zero, the largest f sin(theta) with a positive and the smallest
+    with a negative response, each three clear of zero, and the mean of both sides. It is told once the two lie
+    close together. A note: the response is measured there, and it is none.
     """
 
     def __init__(self, circumstances: Circumstances) -> None:
         self._frequencies = circumstances.frequencies_hz
         self._tracker = ArrivalTracker(circumstances)
         self._phase: NDArray[np.complex128] | None = None
-        self._positive, self._negative = 0.0, np.inf
+        self._low, self._high = 0.0, np.inf
+        self._strong = np.zeros(circumstances.frequencies_hz.size, bool)
+        shape = (circumstances.frequencies_hz.size, 2)  # lines, sides
+        self._positive, self._negative = np.zeros(shape), np.full(shape, np.inf)
+        self._speed = speed_of_sound(20.0)
         self._limit = 1.4 * FIRST_NULL * 1500 / (2 * pi * circumstances.nominal_radius_m)
         self._standing = Standing()
         self._points = 0
@@ -156,29 +185,31 @@ class ElementNullCheck:
             if not seen.reference and abs(seen.commanded.theta) > 1e-3:
                 return []
             self._phase = np.exp(-1j * np.angle(turned))
+            self._strong = np.abs(turned) > STRONG * seen.component_noise_v
         self._points += 1
         signed = (turned * self._phase).real
         product = self._frequencies * abs(sin(seen.commanded.theta))
-        clear = (np.abs(signed) > STRONG * seen.component_noise_v) & (product < self._limit)
-        if (clear & (signed < 0)).any():
-            self._negative = min(self._negative, float(product[clear & (signed < 0)].min()))
-        below = clear & (signed > 0)
-        if below.any():
-            self._positive = max(self._positive, float(product[below].max()))
-        if not np.isfinite(self._negative) or self._positive <= 0:
+        clear = self._strong & (np.abs(signed) > CLEAR * seen.component_noise_v) & (product < self._limit)
+        side = int(seen.commanded.theta > 0)
+        low, high = self._positive[:, side], self._negative[:, side]
+        self._positive[:, side] = np.where(clear & (signed > 0), np.maximum(low, product), low)
+        self._negative[:, side] = np.where(clear & (signed < 0), np.minimum(high, product), high)
+        # an error of angle zero moves the null outwards on one side and inwards on the other: the mean is free of it
+        low, high = self._positive.mean(axis=1), self._negative.mean(axis=1)
+        self._low, self._high = float(low[self._positive.min(axis=1) > 0].max(initial=0.0)), float(high.min())
+        if abs(self._high - self._low) > NARROW * self._low:
             return []
         return self._standing.now(self._finding(seen), seen.index)
 
     def finish(self) -> Iterable[Change]:
-        """Nothing more to say."""
-        return []
+        """The last size."""
+        return self._standing.last_word()
 
     def _finding(self, seen: Observation) -> Finding:
-        # the two sides do not see the same null where the stage's zero is off: then the bounds cross
-        middle = (self._positive + self._negative) / 2
-        u = max(abs(self._negative - self._positive) / (2 * 3**0.5), LEAST_U * middle)
-        c = speed_of_sound(seen.temperature_c)
-        radius = FIRST_NULL * c / (2 * pi * middle)
+        middle = (self._low + self._high) / 2
+        u = max(abs(self._high - self._low) / (2 * 3**0.5), LEAST_U * middle)
+        self._speed = speed_or(seen.temperature_c, self._speed)
+        radius = FIRST_NULL * self._speed / (2 * pi * middle)
         top = float(self._frequencies[-1])
         at = np.degrees(np.arcsin(min(1.0, middle / top)))
         return Finding(

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 from collections.abc import Iterable
 from math import cos, degrees, hypot, pi, sin, sqrt
-from statistics import NormalDist
 
 import numpy as np
 
@@ -13,12 +12,12 @@ from checks.element import X_6DB
 from checks.finding import Change, Finding, Severity, Size
 from checks.observation import Circumstances, Observation
 from checks.pivot import PivotEstimate, PivotFit
-from checks.standing import Standing
-from checks.water import speed_of_sound
+from checks.standing import Standing, due
+from checks.water import speed_of_sound, speed_or
 from checks.wording import decibel, mhz, mm
 
 FEWEST = 12
-SETTLED = 20  # points after which a single arrival can be held against the fit
+SETTLED = 10  # points after which a single arrival can be held against the fit
 LEVEL_MATTERS_DB = 0.1
 ANGLE_MATTERS = 2e-3  # rad: the element looks at the source under another angle
 STEP_MATTERS_M = 20e-6
@@ -36,72 +35,80 @@ class PivotCheck:
     whose width at the highest wanted frequency is taken from that of a piston (2 x 2.21 z/(k a), linear theory),
     or it sees the source under another angle.
 
-    A jump: the arrival of one point against the fit of the ones before it, standardised; several in a row to one
-    side. Distribution: normal with the spread of the residuals.
+    A jump: the arrival of one point against what the fit of the ones before it expects there, over the standard
+    deviation of that expectation; Student's t with n - 4 degrees of freedom, three in a row to one side.
+
+    Each plane of rotation has an offset of its own.
     """
 
     def __init__(self, circumstances: Circumstances, false_alarm_rate: float) -> None:
         self._c = circumstances
         self._rate = false_alarm_rate
-        self._limit = NormalDist().inv_cdf(1 - false_alarm_rate / 2)
         self._tracker = ArrivalTracker(circumstances)
         self._plane = -1
-        self._fit = self._new_fit(20.0)
+        self._fit = self._new_fit(speed_of_sound(20.0))
+        self._estimate: PivotEstimate | None = None
         self._largest = 0.0
         self._first = 0
-        self._warmth: float | None = None
-        self._run: list[float] = []
+        self._warm_s: float | None = None
+        self._run: list[tuple[float, float]] = []
         self._shift_s = 0.0
         self._offset = Standing()
         self._step = Standing()
         self._step_from = 0
 
-    def _new_fit(self, temperature_c: float) -> PivotFit:
-        return PivotFit(speed_of_sound(temperature_c), self._c.distance_m, self._c.planned_points)
+    def _new_fit(self, speed_m_s: float) -> PivotFit:
+        return PivotFit(speed_m_s, self._c.distance_m, self._c.planned_points)
 
     def update(self, seen: Observation) -> Iterable[Change]:
         """One more point."""
         arrival = self._tracker.update(seen)
+        changes: list[Change] = []
         if seen.plane != self._plane:
+            changes += self._offset.last_word()
+            self._offset, self._estimate = Standing(), None
             self._plane, self._first = seen.plane, seen.index
-            self._fit, self._largest, self._run, self._shift_s = self._new_fit(seen.temperature_c), 0.0, [], 0.0
+            self._fit = self._new_fit(speed_or(seen.temperature_c, self._fit.speed_m_s))
+            self._largest, self._run, self._shift_s = 0.0, [], 0.0
         if not arrival.usable:
-            return []
+            return changes
         time = self._at_first_temperature(arrival, seen) - self._shift_s
         theta = seen.commanded.theta
-        estimate = self._fit.estimate()
-        changes = []
-        if estimate is not None and self._jumps(estimate, theta, time, seen.index):
-            changes = self._jump(seen.index)
+        if self._estimate is not None and self._jumps(self._estimate, theta, time, seen.index):
+            changes += self._jump(seen.index)
             if self._run:
                 return changes  # not yet known whether it stays: it must not pull the fit
             time = self._at_first_temperature(arrival, seen) - self._shift_s
         self._fit.add(theta, time, arrival.standard_uncertainty_s, seen.index)
         self._largest = max(self._largest, abs(theta))
-        return [*changes, *self._offset.now(self._finding(seen.index), seen.index)]
+        if due(self._fit.points):
+            self._estimate = self._fit.estimate()
+            changes += self._offset.now(self._finding(seen.index), seen.index)
+        return changes
 
     def finish(self) -> Iterable[Change]:
-        """Nothing more to say."""
-        return []
+        """The last size of the offset."""
+        return self._offset.last_word()
 
     def _at_first_temperature(self, arrival: Arrival, seen: Observation) -> float:
         """Arrival as it would be at the temperature of the first point."""
-        if self._warmth is None:
-            self._warmth = seen.temperature_c
-        z = self._c.distance_m
-        return arrival.time_s - z / speed_of_sound(seen.temperature_c) + z / speed_of_sound(self._warmth)
+        travel = self._c.distance_m / speed_or(seen.temperature_c, self._fit.speed_m_s)
+        if self._warm_s is None:
+            self._warm_s = travel
+        return arrival.time_s - travel + self._warm_s
 
     # --- the offset -------------------------------------------------------------------------------------
 
     def _finding(self, at: int) -> Finding | None:
-        fit = self._fit.estimate()
+        fit, ease = self._estimate, self._offset.ease
         if fit is None or fit.points < FEWEST:
             return None
         freedom = fit.points - 4
         statistic = float(np.array([fit.x_m, fit.z_m]) @ np.linalg.solve(fit.covariance, [fit.x_m, fit.z_m]))
         threshold = freedom * (self._rate ** (-2 / freedom) - 1)
         level, turned = self._consequence(fit)
-        if statistic <= threshold or (level < LEVEL_MATTERS_DB and turned < ANGLE_MATTERS):
+        matters = level >= LEVEL_MATTERS_DB * ease or turned >= ANGLE_MATTERS * ease
+        if statistic <= threshold * ease or not matters:
             return None
         return self._say(fit, level, turned, at)
 
@@ -137,16 +144,16 @@ class PivotCheck:
     def _jumps(self, fit: PivotEstimate, theta: float, time: float, order: int) -> bool:
         if fit.points < SETTLED:
             return False
-        row = self._fit.row(theta, order)
-        predicted = fit.arrival_s + float(fit.arrival_at(np.array(theta), self._fit.speed_m_s))
-        innovation = time - predicted - fit.drift_s * row[3]
-        far = abs(innovation) > self._limit * max(fit.residual_sd_s, 1e-11) * sqrt(1 + 8 / fit.points)
+        expected, spread = fit.expected(self._fit.row(theta, order))
+        innovation, spread = time - expected, max(spread, 1e-11)
+        freedom = fit.points - 4
+        far = abs(innovation) > spread * sqrt(freedom * (self._rate ** (-2 / freedom) - 1))
         if not far or abs(innovation) * self._fit.speed_m_s < STEP_MATTERS_M:
             self._run = []
             return False
-        if self._run and self._run[-1] * innovation < 0:
+        if self._run and self._run[-1][0] * innovation < 0:
             self._run = []
-        self._run.append(innovation)
+        self._run.append((innovation, spread))
         return True
 
     def _jump(self, at: int) -> list[Change]:
@@ -155,20 +162,23 @@ class PivotCheck:
             self._step_from = at
         if len(self._run) < STEP_POINTS:
             return []
-        size_s = sum(self._run) / len(self._run)
-        spread = float(np.std(self._run)) / sqrt(len(self._run)) + 1e-11
+        size_s = sum(size for size, _ in self._run) / len(self._run)
+        # the expectations lean on one fit and are wrong together: no division by the root of their number
+        spread = max(spread for _, spread in self._run)
         self._shift_s += size_s
         self._run = []
+        return self._step.now(self._say_step(size_s, spread), at)
+
+    def _say_step(self, size_s: float, spread_s: float) -> Finding:
         c = self._fit.speed_m_s
-        finding = Finding(
+        return Finding(
             code="arrival.step",
             severity="caution",
             summary=f"the arrival jumped by {size_s * 1e9:+.1f} ns, as if the element had moved "
-            f"{mm(size_s * c, spread * c)} along the beam",
-            sizes=(Size("step", size_s * c, spread * c, "m"),),
-            points=(self._step_from, at, STEP_POINTS),
+            f"{mm(size_s * c, spread_s * c)} along the beam",
+            sizes=(Size("step", size_s * c, spread_s * c, "m"),),
+            points=(self._step_from, self._step_from + STEP_POINTS - 1, STEP_POINTS),
             consequence="points before and after the jump were not taken at the same place",
             remedy="look for lost steps or a sensor that slipped in its holder; home the stage and repeat from point "
             f"{self._step_from}",
         )
-        return self._step.now(finding, at)

@@ -25,10 +25,10 @@ class RangeCheck:
     the reference stays below a quarter of the range, which costs two bits of the digitiser.
     """
 
-    def __init__(self, circumstances: Circumstances) -> None:
-        self._half_points = circumstances.planned_points
-        self._clipped = Standing()
+    def __init__(self) -> None:
+        self._clipped = Standing(tally=True)
         self._poor = Standing()
+        self._hopeless = self._upper = self._lower = False
         self._first = self._last = self._count = self._samples = self._seen = 0
 
     def update(self, seen: Observation) -> Iterable[Change]:
@@ -47,13 +47,15 @@ class RangeCheck:
         return changes
 
     def finish(self) -> Iterable[Change]:
-        """Nothing more to say."""
-        return []
+        """The last tally."""
+        return [*self._clipped.last_word(), *self._poor.last_word()]
 
     def _say_clipped(self, seen: Observation) -> Finding:
-        hopeless = self._seen >= HALT_POINTS and self._count > HALT_SHARE * self._seen
-        severity: Severity = "halt" if hopeless else "caution"
-        rails = [name for name, n in (("upper", seen.clipped_high), ("lower", seen.clipped_low)) if n]
+        self._hopeless |= self._seen >= HALT_POINTS and self._count > HALT_SHARE * self._seen
+        severity: Severity = "halt" if self._hopeless else "caution"
+        self._upper |= seen.clipped_high > 0
+        self._lower |= seen.clipped_low > 0
+        rails = [name for name, touched in (("upper", self._upper), ("lower", self._lower)) if touched]
         return Finding(
             code="range.clipped",
             severity=severity,
@@ -66,7 +68,7 @@ class RangeCheck:
         )
 
     def _say_poor(self, seen: Observation) -> Finding | None:
-        if seen.range_use >= POOR:
+        if seen.range_use >= POOR / self._poor.ease:
             return None
         return Finding(
             code="range.poor",

@@ -19,6 +19,7 @@ from numpy.typing import NDArray
 Vector = NDArray[np.float64]
 TIMING_FLOOR_S = 2e-11  # trigger jitter and sampling clock leave at least this much
 COLUMNS = 4
+WORST_CONDITION = 1e12
 SCALE_U = 2e-3  # relative to the whole offset: speed of sound, scale of the rotation axis, slope of the beam
 
 
@@ -28,6 +29,8 @@ class PivotEstimate:
 
     Attributes:
         residual_sd_s: standard deviation of the arrivals about the fit.
+        coefficients, coefficient_covariance: shapes (J,) and (J, J), of the plain linear fit, before the
+            curvature of the wave is put in; in the order of `PivotFit.row`.
     """
 
     x_m: float
@@ -37,6 +40,15 @@ class PivotEstimate:
     arrival_s: float
     drift_s: float
     points: int
+    coefficients: Vector
+    coefficient_covariance: Vector
+
+    def expected(self, row: Vector) -> tuple[float, float]:
+        """Arrival that the linear fit expects for one row of the model, and its standard deviation there, s."""
+        row = row[: self.coefficients.size]
+        shift = self.arrival_s - float(self.coefficients[0])
+        spread = float(row @ self.coefficient_covariance @ row) + self.residual_sd_s**2
+        return shift + float(row @ self.coefficients), float(np.sqrt(spread))
 
     def arrival_at(self, theta: Vector, speed_m_s: float) -> Vector:
         """Arrival relative to that at angle zero, seconds, shape of `theta`."""
@@ -86,10 +98,11 @@ class PivotFit:
         scale = np.sqrt(np.diag(self.normal)[:kept])
         if (scale <= 0).any():
             return None
-        scaled = self.normal[:kept, :kept] / np.outer(scale, scale)
-        if np.linalg.cond(scaled) > 1e12:
+        values, vectors = np.linalg.eigh(self.normal[:kept, :kept] / np.outer(scale, scale))
+        if values[0] < values[-1] / WORST_CONDITION:
             return None
-        inverse = np.linalg.inv(scaled) / np.outer(scale, scale)
+        vectors = vectors / scale[:, None]
+        inverse = (vectors / values) @ vectors.T
         solution = inverse @ self.moment[:kept]
         chi2 = max(0.0, self.square - float(solution @ self.moment[:kept]))
         freedom = self.points - kept
@@ -109,6 +122,8 @@ class PivotFit:
             arrival_s=float(solution[0]) + self.origin_s,
             drift_s=float(solution[3]) if drift else 0.0,
             points=self.points,
+            coefficients=solution,
+            coefficient_covariance=covariance,
         )
 
 
@@ -124,9 +139,8 @@ def fit_pivot(
     estimate = fit.estimate()
     if estimate is None:
         return None
-    drift = np.array(order) / max(fit.order_scale, 1) - 0.5
-    model = estimate.arrival_s + estimate.arrival_at(theta, speed_m_s) + estimate.drift_s * drift
-    residual = np.abs(arrival_s - model)
+    expected = [estimate.expected(fit.row(float(a), int(n)))[0] for a, n in zip(theta, order, strict=True)]
+    residual = np.abs(arrival_s - np.array(expected))
     spread = 1.4826 * float(np.median(residual))
     kept = residual <= 5 * max(spread, TIMING_FLOOR_S)
     if kept.all():

@@ -42,6 +42,11 @@ def speed_of_sound(temperature_c: float) -> float:
     return float(polyval(_within(temperature_c), np.array(SPEED)))
 
 
+def speed_or(temperature_c: float, otherwise: float) -> float:
+    """Speed of sound, m/s; `otherwise` where the reading is no temperature of water: a check must go on."""
+    return speed_of_sound(temperature_c) if LOW_C <= temperature_c <= HIGH_C else otherwise
+
+
 def density(temperature_c: float) -> float:
     """Density of air-saturated water, kg/m³ (Jones and Harris 1992)."""
     return float(polyval(_within(temperature_c), np.array(DENSITY)))
