@@ -9,6 +9,8 @@ from queue import Empty, SimpleQueue
 from threading import Event as Flag
 from threading import Thread
 
+from msgspec import Raw
+
 from acquire.conductor import Conductor
 from acquire.control import Control
 from acquire.messages import Event, ScanState, StateChanged
@@ -31,7 +33,7 @@ class BenchThread(Thread):
 
     def __init__(self, bench: Bench, profiles: Mapping[Role, Instrument]) -> None:
         super().__init__(name="bench")
-        self.events: SimpleQueue[Event] = SimpleQueue()
+        self.events: SimpleQueue[Event | Raw] = SimpleQueue()
         self.control = Control()
         self.ready = Flag()
         self.failed: str | None = None
@@ -96,7 +98,7 @@ class BenchThread(Thread):
         except KNOWN as error:
             self.publish(StateChanged(state="failed", reason=str(error)))
 
-    def publish(self, event: Event) -> None:
+    def publish(self, event: Event | Raw) -> None:
         """Pass an event on, and remember the state."""
         if isinstance(event, StateChanged):
             self.state = event.state

@@ -2,10 +2,9 @@
 
 from __future__ import annotations
 
-import hashlib
 from collections.abc import Sequence
 from concurrent.futures import Future, ThreadPoolExecutor
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
@@ -20,17 +19,12 @@ from checks.observation import Observation
 
 @dataclass
 class ChunkWriter:
-    """Collects points into chunks; one thread writes them, and only then lets the journal forget them.
-
-    Attributes:
-        digests: SHA-256 of the raw counts of each chunk, by its number.
-    """
+    """Collects points into chunks; one thread writes them, and only then lets the journal forget them."""
 
     path: Path
     journal: Journal
     samples: int
     dtype: np.dtype[Any]
-    digests: dict[int, str] = field(default_factory=dict)
 
     def __post_init__(self) -> None:
         self._pool = ThreadPoolExecutor(1, "chunks")
@@ -89,7 +83,6 @@ class ChunkWriter:
 
     def _write(self, number: int, counts: NDArray[Any], records: list[PointRecord]) -> None:
         write_counts(self.path, number, counts)
-        self.digests[number] = hashlib.sha256(counts.data).hexdigest()
         self.journal.chunk_is_durable(number, records)
 
     def _raise_failures(self) -> None:

@@ -13,6 +13,8 @@ from pathlib import Path
 from time import monotonic, sleep
 from typing import Any
 
+from msgspec import Raw
+
 from acquire.control import Control
 from acquire.header import StoreHeader, circumstances_from_mapping, read_attributes
 from acquire.messages import (
@@ -48,7 +50,7 @@ RECONNECTS = 3
 HOLD_LOOKS_S = 0.05
 SWITCH_OFF_TRIES, SWITCH_OFF_PAUSE_S = 4, 1.0
 
-Publish = Callable[[Event], None]
+Publish = Callable[[Event | Raw], None]
 
 
 class Stopped(Exception):
@@ -326,7 +328,7 @@ class Conductor:
         self._switch_source(True)
         self._state("running")
 
-    def _pass_on(self, events: list[Event]) -> None:
+    def _pass_on(self, events: list[Event | Raw]) -> None:
         """Publish what the recorder says, and hold where the scan's policy asks for it."""
         for event in events:
             self._publish(event)

@@ -53,6 +53,14 @@ OPENING_S = 30.0
 BUSY = ("preparing", "running", "held", "stopping")
 
 
+class Numbered(msgspec.Struct, frozen=True, kw_only=True):
+    """An `EventEnvelope` as it is sent: events of the recorder arrive encoded and stay so."""
+
+    version: int = PROTOCOL_VERSION
+    number: int
+    body: Event | msgspec.Raw
+
+
 class BenchUnusable(Exception):
     """The bench cannot be opened, or was lost; one line with the cure."""
 
@@ -67,10 +75,10 @@ class Daemon:
         self._number = 0
         self.ended = False
 
-    def numbered(self, event: Event) -> bytes:
+    def numbered(self, event: Event | msgspec.Raw) -> bytes:
         """The event with the next number, encoded, and kept for clients that missed it."""
         self._number += 1
-        data = encode(EventEnvelope(number=self._number, body=event))
+        data = encode(Numbered(number=self._number, body=event))
         self._history.append(data)
         return data
 

@@ -95,9 +95,8 @@ class Journal:
 
 def _append(file: BinaryIO, record: bytes, counts: bytes | memoryview) -> None:
     check = zlib.crc32(counts, zlib.crc32(record))
-    entry = b"".join((HEAD.pack(MAGIC, len(record), len(counts), check), record, counts))
-    written = file.write(entry)
-    if written != len(entry):
+    parts = (HEAD.pack(MAGIC, len(record), len(counts), check), record, counts)
+    if os.writev(file.fileno(), parts) != HEAD.size + len(record) + len(counts):
         raise OSError(28, "the disk took only part of an entry")
 
 

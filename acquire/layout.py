@@ -102,7 +102,7 @@ def create(
         shape=shape,
         chunks=(min(CHUNK, points), samples),
         dtype=dtype,
-        compressors=[BloscCodec(cname="zstd", clevel=1, shuffle="bitshuffle"), Crc32cCodec()],
+        compressors=[BloscCodec(cname="lz4", clevel=1, shuffle="bitshuffle"), Crc32cCodec()],
         dimension_names=("point", "sample"),
         attributes={"units": "1", "long_name": "raw counts of the digitiser"},
         config={"write_empty_chunks": True},

@@ -15,6 +15,7 @@ from time import monotonic
 from types import TracebackType
 from typing import Any, Self
 
+import msgspec
 import numpy as np
 from numpy.typing import NDArray
 
@@ -62,7 +63,7 @@ class Recorder:
         self._free = slots
         self._next = 0
         self._failed: str | None = None
-        self._events: list[Event] = []
+        self._events: list[Event | msgspec.Raw] = []
         self._pipe: Connection
         self._process: subprocess.Popen[bytes]
         self.already_stored = 0
@@ -104,7 +105,7 @@ class Recorder:
         self._free -= 1
         self._send(wire.POINT + wire.encode_record(record))
 
-    def poll(self) -> list[Event]:
+    def poll(self) -> list[Event | msgspec.Raw]:
         """Events since the last call; does not wait.
 
         Raises:
@@ -114,7 +115,7 @@ class Recorder:
         events, self._events = self._events, []
         return events
 
-    def finish(self, sealed: bool, timeout_s: float = FINISH_S) -> list[Event]:
+    def finish(self, sealed: bool, timeout_s: float = FINISH_S) -> list[Event | msgspec.Raw]:
         """No more points; wait until the store is complete. Returns the last events.
 
         Raises:
@@ -173,7 +174,9 @@ class Recorder:
     def _take(self, frame: bytes) -> None:
         kind, body = frame[:1], frame[1:]
         if kind == wire.EVENTS:
-            self._events += wire.decode_events(body)
+            self._events += wire.decode_raw(body)
+        elif kind == wire.FINDINGS:
+            self._events += wire.decode_findings(body)
         elif kind == wire.FREED:
             self._free += int(body)
         elif kind == wire.FAILED:

@@ -122,11 +122,12 @@ class RecorderLoop:
     def _judge_part(self, records: list[PointRecord], rows: list[NDArray[Any]]) -> None:
         seen, changes = self._judge.take(records, rows)
         events: list[Event] = [point_event(o) for o in seen]
-        events += [finding_event(c) for c in changes]
         if monotonic() - self._drawn >= PICTURE_S:
             self._drawn = monotonic()
             events.append(thinned(records[-1], rows[-1]))
-        self._pipe.send_bytes(wire.EVENTS + wire.encode_events(events))
+        self._pipe.send_bytes(wire.EVENTS + wire.encode(events))
+        if changes:
+            self._pipe.send_bytes(wire.FINDINGS + wire.encode([finding_event(c) for c in changes]))
         if records[-1].index % CHUNK == CHUNK - 1:
             self._sync()  # before the chunk's rows are used again
         self._chunks.add(records, seen)
@@ -137,7 +138,7 @@ class RecorderLoop:
             count, self._unsynced = self._unsynced, 0
             self._announced += count
             event = PointsStored(last=self._announced, count=count)
-            self._pipe.send_bytes(wire.EVENTS + wire.encode_events([event]))
+            self._pipe.send_bytes(wire.EVENTS + wire.encode([event]))
 
     def _sync_quietly(self) -> None:
         """The daemon is gone: keep what is there, tell nobody."""
@@ -154,13 +155,12 @@ class RecorderLoop:
             "sealed": sealed,
             "points": self._announced + 1,
             "finding_changes": changes_as_mappings(self._judge.changes),
-            "counts_sha256": [self._chunks.digests[n] for n in sorted(self._chunks.digests)],
         }
         group.attrs.update(closing)
         consolidate(self._path)
         self._journal.remove()
         if changes:
-            self._pipe.send_bytes(wire.EVENTS + wire.encode_events([finding_event(c) for c in changes]))
+            self._pipe.send_bytes(wire.FINDINGS + wire.encode([finding_event(c) for c in changes]))
         self._pipe.send_bytes(wire.FINISHED)
 
     def close(self) -> None:

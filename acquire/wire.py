@@ -6,7 +6,7 @@ import msgspec
 import numpy as np
 
 from acquire.header import StoreHeader
-from acquire.messages import Event
+from acquire.messages import FindingChanged
 from acquire.record import PointRecord
 from checks.observation import Circumstances
 
@@ -15,15 +15,17 @@ POINT = b"P"  # a record; its counts stand in the next slot of the ring
 FINISH = b"F"  # body b"1": seal, b"0": broken off
 # from the recorder
 READY = b"S"  # body: how many points are in the store already
-EVENTS = b"E"  # a list of events
+EVENTS = b"E"  # a list of encoded events, which the daemon passes on as they are
+FINDINGS = b"J"  # a list of findings, at which the daemon looks
 FREED = b"R"  # body: how many slots may be used again
 FAILED = b"X"  # body: one line
 FINISHED = b"Z"
 
 encode_record = msgspec.msgpack.Encoder().encode
 decode_record = msgspec.msgpack.Decoder(PointRecord).decode
-encode_events = msgspec.msgpack.Encoder().encode
-decode_events = msgspec.msgpack.Decoder(list[Event]).decode
+encode = msgspec.msgpack.Encoder().encode
+decode_raw = msgspec.msgpack.Decoder(list[msgspec.Raw]).decode
+decode_findings = msgspec.msgpack.Decoder(list[FindingChanged]).decode
 
 
 class Setup:

@@ -65,8 +65,7 @@ def angle_at_level(ka: float, level_db: float, edge: Edge) -> float | None:
     theta = np.linspace(0.0, np.pi / 2, 4001)
     wanted = 10 ** (level_db / 20)
     below = np.nonzero(response(theta, ka, edge) <= wanted)[0]
-    # at 90 degrees itself a soft element is silent; a level only reached there is not reached below it
-    if not below.size or below[0] == 0 or (below[0] == theta.size - 1 and edge == "soft" and wanted <= 0):
+    if not below.size or below[0] == 0:
         return None
 
     def excess(at: float) -> float:

@@ -59,27 +59,37 @@ class Reducer:
         """Observations of points of one aligned block of eight; `counts` are rows of shape (samples,)."""
         rows = [meta.index % ROWS for meta in metas]
         self._block[:] = 0.0
-        for row, samples in zip(rows, counts, strict=True):
-            self._block[row] = samples[self._gate]
-        product = (self._block @ self._matrix).astype(np.float64)
+        whole = np.array(counts)
+        self._block[rows] = whole[:, self._gate]
+        product = (self._block @ self._matrix)[rows].astype(np.float64)
+        quiet = whole[:, self._quiet].astype(np.float32)
+        level = quiet.mean(axis=1, dtype=np.float64)
+        noise = quiet.std(axis=1, dtype=np.float64)
+        gated = self._block[rows] - level[:, None].astype(np.float32)
+        numbers = _Rows(
+            parts=product - level[:, None] * self._leak,
+            level=level,
+            noise=noise,
+            top=gated.max(axis=1).astype(np.float64),
+            bottom=gated.min(axis=1).astype(np.float64),
+            square=np.einsum("ij,ij->i", gated, gated).astype(np.float64),
+            high=whole.max(axis=1),
+            low=whole.min(axis=1),
+        )
         return [
-            self._observe(product[row], self._block[row], samples, meta)
-            for row, samples, meta in zip(rows, counts, metas, strict=True)
+            self._observe(numbers, i, samples, meta)
+            for i, (samples, meta) in enumerate(zip(counts, metas, strict=True))
         ]
 
-    def _observe(
-        self, product: NDArray[np.float64], gated: NDArray[np.float32], samples: Counts, meta: PointMeta
-    ) -> Observation:
-        quiet = samples[self._quiet].astype(np.float32)
-        level = float(quiet.mean(dtype=np.float64))
+    def _observe(self, numbers: _Rows, i: int, samples: Counts, meta: PointMeta) -> Observation:
         gain = meta.volts_per_count
-        noise = float(quiet.std(dtype=np.float64)) * abs(gain)
-        parts = (product - level * self._leak) * gain
+        noise = float(numbers.noise[i]) * abs(gain)
+        level = float(numbers.level[i])
+        parts = numbers.parts[i] * gain
         half = parts.size // 2
         components = parts[:half] + 1j * parts[half:]
-        low, high = int(samples.min()), int(samples.max())
-        in_gate = gated - np.float32(level)
-        ends = (float(in_gate.max()) * gain, float(in_gate.min()) * gain)
+        low, high = int(numbers.low[i]), int(numbers.high[i])
+        ends = (float(numbers.top[i]) * gain, float(numbers.bottom[i]) * gain)
         middle, half_range = (meta.highest + meta.lowest) / 2, (meta.highest - meta.lowest) / 2
         return Observation(
             index=meta.index,
@@ -95,10 +105,24 @@ class Reducer:
             component_noise_v=np.full(self._lines, noise * self._noise_gain),
             peak_v=max(ends),
             trough_v=min(ends),
-            square_integral_v2s=float(np.dot(in_gate, in_gate)) * gain**2 * self._interval_s,
+            square_integral_v2s=float(numbers.square[i]) * gain**2 * self._interval_s,
             noise_rms_v=noise,
             offset_v=level * gain + meta.volts_at_zero,
             clipped_high=int(np.count_nonzero(samples >= meta.highest)) if high >= meta.highest else 0,
             clipped_low=int(np.count_nonzero(samples <= meta.lowest)) if low <= meta.lowest else 0,
             range_use=min(1.0, max(high - middle, middle - low) / half_range),
         )
+
+
+@dataclass(frozen=True)
+class _Rows:
+    """What was computed for all rows at once, each row from its own samples alone; in counts."""
+
+    parts: NDArray[np.float64]
+    level: NDArray[np.float64]
+    noise: NDArray[np.float64]
+    top: NDArray[np.float64]
+    bottom: NDArray[np.float64]
+    square: NDArray[np.float64]
+    high: NDArray[np.int8] | NDArray[np.int16]
+    low: NDArray[np.int8] | NDArray[np.int16]

@@ -73,6 +73,7 @@ class MotionStage(ABC):
         self._words = {a: words[a] for a in self.axes}
         self._at: dict[Axis, float] = {}
         self._expected_s = 0.0
+        self._prompt = False  # the last move was over before it was asked after
 
     # --- what a family provides -------------------------------------------------------------------------
 
@@ -172,16 +173,20 @@ class MotionStage(ABC):
             InstrumentTimeout: it still moves after `timeout_s`.
             Cancelled: the operator asked to stop; the stage is stopped.
         """
-        start = monotonic()
+        start, waited = monotonic(), False
         self._accepted(timeout_s, cancelled)
         while True:
-            report = self._report()
-            if report.done:
+            # all reports at once where the stage has been there before it was asked; else one to look
+            self._ask_reports(REPORTS_WANTED if self._prompt else 1)
+            reports = [self._read_report() for _ in range(REPORTS_WANTED if self._prompt else 1)]
+            if reports[0].done and not self._prompt:
                 self._ask_reports(REPORTS_WANTED - 1)
-                more = [self._read_report() for _ in range(REPORTS_WANTED - 1)]
-                if all(r.done and self._alike(report, r) for r in more):
-                    report = more[-1]
-                    break
+                reports += [self._read_report() for _ in range(REPORTS_WANTED - 1)]
+            if all(r.done and self._alike(reports[0], r) for r in reports):
+                self._prompt = not waited
+                report = reports[-1]
+                break
+            waited, self._prompt = True, False
             gone = monotonic() - start
             if cancelled is not None and cancelled():
                 self.stop()

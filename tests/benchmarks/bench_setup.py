@@ -1,0 +1,180 @@
+"""A simulated bench that answers at once from a bank prepared beforehand, and the loops that are timed on it."""
+
+from __future__ import annotations
+
+import os
+import time
+from collections.abc import Iterator
+from contextlib import contextmanager
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+import psutil
+import pyvisa
+import serial
+
+from acquire.bench_file import write_bench
+from acquire.client import Client
+from acquire.messages import RunScan
+from acquire.processes import daemon, simulated_bench
+from profiles.load import FOLDER_VARIABLE, load_bench, load_scan, load_sensor, load_source, shipped_folder
+
+SAMPLES = 10_000
+WAVEFORMS = 64
+INTERVAL_S = 4e-9
+RUN_S = 900.0
+
+
+def write_bank(path: Path) -> None:
+    """Tone bursts with harmonics and noise, 12 significant bits, different from point to point."""
+    rng = np.random.default_rng(1)
+    start = 0.120 / 1486.0 - 4e-6
+    t = start + np.arange(SAMPLES) * INTERVAL_S
+    inside = (t > 0.120 / 1486.0) & (t < 0.120 / 1486.0 + 12 / 2.25e6)
+    wave = sum(np.sin(2 * np.pi * 2.25e6 * n * t) / n for n in range(1, 13)) * inside
+    counts = np.stack(
+        [12_000 * (wave + 0.01 * rng.standard_normal(SAMPLES)) * (1 - 0.3 * i / WAVEFORMS) for i in range(WAVEFORMS)]
+    )
+    full = np.full(WAVEFORMS, 1.0)
+    poses = np.zeros((WAVEFORMS, 5))
+    np.savez(
+        path,
+        carriage=poses,
+        reported_before=poses,
+        reported_after=poses,
+        counts=counts.astype(np.int16),
+        volts_per_count=full * 0.4 / 65536,
+        volts_at_zero=full * 0,
+        interval_s=full * INTERVAL_S,
+        start_s=full * start,
+        full_scale_v=full * 0.4,
+        averages=np.ones(WAVEFORMS, np.int64),
+        lowest=-32768,
+        highest=32767,
+        temperature_c=full * 21.0,
+        strict=False,
+    )
+
+
+@contextmanager
+def fast_bench(folder: Path) -> Iterator[Path]:
+    """The bench file of a running simulator in bank mode, with a stage that needs no settling."""
+    profiles = folder / "profiles"
+    (profiles / "instruments").mkdir(parents=True)
+    stage = (shipped_folder() / "instruments" / "stage-iso.toml").read_text()
+    (profiles / "instruments" / "stage-iso.toml").write_text(stage.replace("settle_ms = 12\n", ""))
+    before = os.environ.get(FOLDER_VARIABLE)
+    os.environ[FOLDER_VARIABLE] = str(profiles)
+    bank, bench = folder / "bank.npz", folder / "source.toml"
+    write_bank(bank)
+    write_bench(load_bench("demo-tank"), bench)
+    try:
+        with simulated_bench(bench, folder, "--speed", "max", "--bank", str(bank)) as reached:
+            yield reached
+    finally:
+        if before is None:
+            os.environ.pop(FOLDER_VARIABLE)
+        else:
+            os.environ[FOLDER_VARIABLE] = before
+
+
+def scan_of(points: int, store: Path) -> RunScan:
+    """A rotation over that many points (one way, so that the moves are as short as in the bare loop)."""
+    scan = load_scan("demo-rotation").model_dump(mode="json")
+    scan["rotation"] = {"span_deg": 90.0, "step_deg": 1.0, "order": "one-way", "repeats": -(-points // 91)}
+    scan["capture"] = {"averages": 1, "sample_rate_mhz": 250.0, "points": SAMPLES, "full_scale_v": 0.4}
+    scan |= {"revisit_every": 0, "hold_on": []}
+    return RunScan(
+        scan=scan,
+        sensor=load_sensor(scan["sensor"]).model_dump(mode="json"),
+        source=load_source(scan["source"]).model_dump(mode="json"),
+        store=str(store),
+    )
+
+
+@dataclass(frozen=True)
+class Timed:
+    """Points of a run, the seconds that they took, and the largest memory of daemon and recorder together, bytes."""
+
+    points: int
+    seconds: float
+    memory: int
+
+    @property
+    def rate(self) -> float:
+        """Points per second."""
+        return self.points / self.seconds
+
+
+def whole_pipeline(bench: Path, folder: Path, points: int) -> Timed:
+    """Move, capture, transfer, judge and store through the daemon; from its first point to the sealed store."""
+    endpoint = f"ipc://{folder / f'd{points}.socket'}"
+    with daemon(bench, endpoint), Client(endpoint) as client:
+        family = [p for p in psutil.process_iter(["cmdline"]) if endpoint in (p.info["cmdline"] or [])]
+        client.ask(scan_of(points, folder / f"scan-{points}-{time.monotonic_ns()}.zarr"))
+        begun = None
+        most, weigh_at = 0, 0.0
+        deadline = time.monotonic() + RUN_S
+        while time.monotonic() < deadline:
+            status = client.status()
+            if status.done and begun is None:
+                begun, first = time.perf_counter(), status.done
+            if time.monotonic() > weigh_at:  # looking takes some milliseconds, so seldom
+                weigh_at = time.monotonic() + 1.0
+                most = max(most, sum(memory_of(p) for p in family))
+            if status.state in ("sealed", "broken-off", "failed"):
+                break
+            time.sleep(0.05)
+        if status.state != "sealed" or begun is None:
+            raise RuntimeError(f"the scan ended {status.state}")
+        return Timed(status.planned - first, time.perf_counter() - begun, most)
+
+
+def memory_of(process: psutil.Process) -> int:
+    """Memory of its own of a process and its children, bytes; shared pages are counted once."""
+    try:
+        return sum(p.memory_full_info().uss for p in [process, *process.children(recursive=True)])
+    except psutil.NoSuchProcess:
+        return 0
+
+
+def bare_loop(bench: Path, points: int) -> Timed:
+    """What a short script does: move, trigger, read into memory, with pyserial and PyVISA as they come."""
+    profile = load_bench(bench)
+    address = profile.instruments["oscilloscope"].address
+    host, port = address.removeprefix("tcp://").split(":")
+    manager = pyvisa.ResourceManager("@py")
+    scope: Any = manager.open_resource(f"TCPIP::{host}::{port}::SOCKET")
+    scope.read_termination = scope.write_termination = "\n"
+    generator: Any = manager.open_resource(
+        "TCPIP::{}::{}::SOCKET".format(*profile.instruments["generator"].address.removeprefix("tcp://").split(":"))
+    )
+    generator.read_termination = generator.write_termination = "\n"
+    device = profile.instruments["stage"].address.removeprefix("serial://")
+    kept = []
+    try:
+        with serial.Serial(device, timeout=5) as stage:
+            generator.write("SOUR:FREQ 2.25E6;VOLT 10;BURS:NCYC 12;INT:PER 0.002;:SOUR:BURS:STAT ON;:OUTP ON")
+            generator.query("*OPC?")
+            stage.write(b"$H\n")
+            while stage.readline() != b"ok\n":
+                pass
+            scope.write(":ACQ:POIN 10000;SRAT 250E6;:CHAN1:RANG 0.4;:WAV:FORM WORD;BYT MSBF;UNS 0")
+            begun = time.perf_counter()
+            for i in range(points):
+                stage.write(f"G90 G21 G0 X0.0000 Y0.0000 Z120.0000 B{i % 91 - 45:.4f} C0.0000\n".encode())
+                if stage.readline() != b"ok\n":
+                    raise RuntimeError("the stage refused a move")
+                scope.query(":INIT;*OPC?")
+                kept.append(scope.query_binary_values(":WAV:DATA?", "h", is_big_endian=True, container=np.array))
+            seconds = time.perf_counter() - begun
+            generator.write("OUTP OFF")
+            generator.query("*OPC?")
+    finally:
+        scope.close()
+        generator.close()
+    if len(kept) != points or any(w.size != SAMPLES for w in kept):
+        raise RuntimeError("the bare loop lost waveforms")
+    return Timed(points, seconds, 0)
