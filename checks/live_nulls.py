@@ -107,13 +107,14 @@ class SpectrumCheck:
         )
 
     def _say_echo(self, ripple: tuple[float, float], at: int) -> Finding:
-        amplitude, delay = ripple
+        amplitude, delay = ripple  # the level alone does not tell a delay from its complement to a whole cycle
+        other = 1 / self._drive_hz - delay
         level = 20 * log10(amplitude * log(10) / 20)  # ln|1 + r exp(i a)| = r cos a - ..., exactly r for r < 1
         return Finding(
             code="null.echo",
             severity="caution",
-            summary=f"the spectrum ripples by ±{decibel(amplitude)}: an echo {delay * 1e6:.2f} us (and whole cycles of "
-            f"{1e6 / self._drive_hz:.2f} us) after the burst lies in the gate",
+            summary=f"the spectrum ripples by ±{decibel(amplitude)}: an echo {delay * 1e6:.2f} or {other * 1e6:.2f} us "
+            f"(and whole cycles of {1e6 / self._drive_hz:.2f} us) after the burst lies in the gate",
             sizes=(Size("ripple", amplitude, amplitude / 10, "dB"),),
             points=(0, at, self._count),
             consequence=f"an echo of about {level:.0f} dB interferes, and differently at every angle",
@@ -136,21 +137,24 @@ class _Ripples:
         self._smooth = np.linalg.qr(smooth)[0]
         self._cycles = np.arange(SLOWEST, DELAYS // 2 + 1) / DELAYS
         turn = 2 * pi * self._cycles[:, None] * n
-        waves = np.stack([np.cos(turn), np.sin(turn)], axis=2)  # (D, K, 2)
-        rest = waves - self._smooth @ (self._smooth.T @ waves)
+        self._waves = np.stack([np.cos(turn), np.sin(turn)], axis=2)  # (D, K, 2)
+        rest = self._waves - self._smooth @ (self._smooth.T @ self._waves)
         # at a delay of half a cycle the sine is zero on every line, so a pseudo-inverse
         self._inverse = np.linalg.pinv(rest, rcond=1e-6)  # (D, 2, K)
         self._rest = rest
 
     def best(self, level: NDArray[np.float64]) -> tuple[float, float, float]:
-        """Largest share explained (0 to 1), its amplitude in dB, its delay in cycles of the drive."""
+        """Largest share explained (0 to 1), its amplitude in dB, its delay in cycles of the drive.
+
+        The amplitude is the largest ripple on any line: near half a cycle the lines do not tell amplitude from phase.
+        """
         y = level[self._lines]
         plain = y - self._smooth @ (self._smooth.T @ y)
-        waves = self._inverse @ plain
-        said = (self._rest @ waves[:, :, None])[:, :, 0]
+        parts = self._inverse @ plain
+        said = (self._rest @ parts[:, :, None])[:, :, 0]
         explained = (said**2).sum(axis=1) / max(float(plain @ plain), 1e-30)
         i = int(np.argmax(explained))
-        return float(explained[i]), float(np.hypot(*waves[i])), float(self._cycles[i])
+        return float(explained[i]), float(np.abs(self._waves[i] @ parts[i]).max()), float(self._cycles[i])
 
 
 class ElementNullCheck:
