@@ -19,7 +19,7 @@ from acquire.record import PointRecord
 from checks.observation import Circumstances, Observation
 
 CHUNK = 64  # points in a chunk of counts
-WIDE_CHUNK = 1024  # points in a chunk of everything else
+WIDE_CHUNK = 4096  # points in a chunk of everything else
 AXIS_NAMES = ("x", "y", "z", "theta", "phi")
 
 

@@ -9,7 +9,7 @@ import os
 import pickle
 import subprocess
 import sys
-from multiprocessing.connection import Connection, Pipe
+from multiprocessing import Pipe
 from pathlib import Path
 from time import monotonic
 from types import TracebackType
@@ -20,6 +20,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from acquire import wire
+from acquire.channel import Channel
 from acquire.header import StoreHeader
 from acquire.messages import Event
 from acquire.record import PointRecord
@@ -64,12 +65,13 @@ class Recorder:
         self._next = 0
         self._failed: str | None = None
         self._events: list[Event | msgspec.Raw] = []
-        self._pipe: Connection
+        self._pipe: Channel
         self._process: subprocess.Popen[bytes]
         self.already_stored = 0
 
     def __enter__(self) -> Self:
-        self._pipe, theirs = Pipe()
+        ours, theirs = Pipe()
+        self._pipe = Channel(ours)
         descriptors = (theirs.fileno(), self._ring.descriptor)
         command = [sys.executable, "-m", "acquire.recorder_process", *map(str, descriptors)]
         environment = os.environ | dict.fromkeys(ONE_THREAD, "1")
@@ -79,7 +81,7 @@ class Recorder:
         )
         theirs.close()
         try:
-            self._pipe.send_bytes(pickle.dumps(self._setup))
+            self._pipe.send(pickle.dumps(self._setup))
             self.already_stored = int(self._wait_for(wire.READY, START_S))
         except BaseException:
             self.close()
@@ -139,22 +141,22 @@ class Recorder:
 
     def _send(self, frame: bytes) -> None:
         try:
-            self._pipe.send_bytes(frame)
+            self._pipe.send(frame)
         except OSError as error:
             self._drain_last_words()
             raise RecorderFailed(self._failed or "the recorder ended unexpectedly") from error
 
     def _drain_last_words(self) -> None:
         try:
-            while self._pipe.poll(0.5):
-                self._take(self._pipe.recv_bytes())
+            while self._pipe.ready(0.5):
+                self._take(self._pipe.receive())
         except (EOFError, OSError, RecorderFailed):
             return
 
     def _receive(self, timeout_s: float = 0.0) -> None:
         try:
-            while self._pipe.poll(timeout_s):
-                self._take(self._pipe.recv_bytes())
+            while self._pipe.ready(timeout_s):
+                self._take(self._pipe.receive())
                 timeout_s = 0.0
         except (EOFError, OSError) as error:
             raise RecorderFailed(self._failed or "the recorder ended unexpectedly") from error
@@ -162,8 +164,8 @@ class Recorder:
     def _wait_for(self, kind: bytes, timeout_s: float) -> bytes:
         deadline = monotonic() + timeout_s
         try:
-            while self._pipe.poll(max(0.0, deadline - monotonic())):
-                frame = self._pipe.recv_bytes()
+            while self._pipe.ready(max(0.0, deadline - monotonic())):
+                frame = self._pipe.receive()
                 if frame[:1] == kind:
                     return frame[1:]
                 self._take(frame)

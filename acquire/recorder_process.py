@@ -19,6 +19,7 @@ import zarr
 from numpy.typing import NDArray
 
 from acquire import wire
+from acquire.channel import Channel
 from acquire.chunks import ChunkWriter
 from acquire.journal import Journal
 from acquire.judge import Judge, changes_as_mappings, finding_event, point_event
@@ -38,7 +39,7 @@ PICTURE_S = 0.2
 class RecorderLoop:
     """State of the recorder between points."""
 
-    def __init__(self, pipe: Connection, setup: wire.Setup, ring: Ring) -> None:
+    def __init__(self, pipe: Channel, setup: wire.Setup, ring: Ring) -> None:
         self._pipe = pipe
         self._setup = setup
         self._ring = ring
@@ -77,19 +78,19 @@ class RecorderLoop:
                     self._journal.add(record, row)
                 self._journal.sync()
         self._announced = len(already.records) - 1
-        self._pipe.send_bytes(wire.READY + str(len(already.records)).encode())
+        self._pipe.send(wire.READY + str(len(already.records)).encode())
 
     def run(self) -> None:
         """Until told to finish, or the daemon is gone."""
         while True:
             try:
                 left = SYNC_S - (monotonic() - self._oldest) if self._unsynced else None
-                if left is not None and (left <= 0 or not self._pipe.poll(left)):
+                if left is not None and (left <= 0 or not self._pipe.ready(left)):
                     self._sync()
                     continue
-                frames = [self._pipe.recv_bytes()]
-                while len(frames) < BATCH and frames[-1][:1] == wire.POINT and self._pipe.poll():
-                    frames.append(self._pipe.recv_bytes())
+                frames = [self._pipe.receive()]
+                while len(frames) < BATCH and frames[-1][:1] == wire.POINT and self._pipe.ready():
+                    frames.append(self._pipe.receive())
             except (EOFError, OSError):
                 self._sync_quietly()
                 return
@@ -109,7 +110,7 @@ class RecorderLoop:
             for record in part:
                 rows.append(self._chunks.place(record.index, self._ring.rows[self._slot]))
                 self._slot = (self._slot + 1) % self._ring.slots
-            self._pipe.send_bytes(wire.FREED + str(len(part)).encode())
+            self._pipe.send(wire.FREED + str(len(part)).encode())
             for record, row in zip(part, rows, strict=True):
                 self._journal.add(record, row)
             if not self._unsynced:
@@ -125,9 +126,9 @@ class RecorderLoop:
         if monotonic() - self._drawn >= PICTURE_S:
             self._drawn = monotonic()
             events.append(thinned(records[-1], rows[-1]))
-        self._pipe.send_bytes(wire.EVENTS + wire.encode(events))
+        self._pipe.send(wire.EVENTS + wire.encode(events))
         if changes:
-            self._pipe.send_bytes(wire.FINDINGS + wire.encode([finding_event(c) for c in changes]))
+            self._pipe.send(wire.FINDINGS + wire.encode([finding_event(c) for c in changes]))
         if records[-1].index % CHUNK == CHUNK - 1:
             self._sync()  # before the chunk's rows are used again
         self._chunks.add(records, seen)
@@ -138,7 +139,7 @@ class RecorderLoop:
             count, self._unsynced = self._unsynced, 0
             self._announced += count
             event = PointsStored(last=self._announced, count=count)
-            self._pipe.send_bytes(wire.EVENTS + wire.encode([event]))
+            self._pipe.send(wire.EVENTS + wire.encode([event]))
 
     def _sync_quietly(self) -> None:
         """The daemon is gone: keep what is there, tell nobody."""
@@ -160,8 +161,8 @@ class RecorderLoop:
         consolidate(self._path)
         self._journal.remove()
         if changes:
-            self._pipe.send_bytes(wire.FINDINGS + wire.encode([finding_event(c) for c in changes]))
-        self._pipe.send_bytes(wire.FINISHED)
+            self._pipe.send(wire.FINDINGS + wire.encode([finding_event(c) for c in changes]))
+        self._pipe.send(wire.FINISHED)
 
     def close(self) -> None:
         """End the thread, close the files."""
@@ -179,8 +180,8 @@ def told(error: OSError) -> str:
 def main() -> int:
     """Entry point: two file descriptors, of the pipe and of the ring."""
     signal.signal(signal.SIGINT, signal.SIG_IGN)
-    pipe = Connection(int(sys.argv[1]))
-    setup: wire.Setup = pickle.loads(pipe.recv_bytes())  # from the parent process only
+    pipe = Channel(Connection(int(sys.argv[1])))
+    setup: wire.Setup = pickle.loads(pipe.receive())  # from the parent process only
     ring = Ring(int(sys.argv[2]), setup.slots, setup.samples, setup.dtype)
     loop = None
     try:
@@ -190,7 +191,7 @@ def main() -> int:
     except (OSError, ValueError) as error:
         line = told(error) if isinstance(error, OSError) else str(error)
         try:
-            pipe.send_bytes(wire.FAILED + line.encode())
+            pipe.send(wire.FAILED + line.encode())
         except OSError:
             return 1
         return 1

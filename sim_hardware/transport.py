@@ -22,7 +22,7 @@ from sim_hardware.conversation import Conversation
 
 RECEIVE = 65_536
 READ = selectors.EVENT_READ
-LINGER_S = 50e-6
+LINGER_S = 0.0
 Piece = bytes | memoryview
 Ready = list[tuple[selectors.SelectorKey, int]]
 

@@ -13,12 +13,12 @@ from typing import Any
 import numpy as np
 import psutil
 import pyvisa
-import serial
 
 from acquire.bench_file import write_bench
 from acquire.client import Client
 from acquire.messages import RunScan
 from acquire.processes import daemon, simulated_bench
+from profiles.bench import Bench
 from profiles.load import FOLDER_VARIABLE, load_bench, load_scan, load_sensor, load_source, shipped_folder
 
 SAMPLES = 10_000
@@ -69,7 +69,7 @@ def fast_bench(folder: Path) -> Iterator[Path]:
     os.environ[FOLDER_VARIABLE] = str(profiles)
     bank, bench = folder / "bank.npz", folder / "source.toml"
     write_bank(bank)
-    write_bench(load_bench("demo-tank"), bench)
+    write_bench(with_stage_on_tcp(load_bench("demo-tank")), bench)
     try:
         with simulated_bench(bench, folder, "--speed", "max", "--bank", str(bank)) as reached:
             yield reached
@@ -78,6 +78,12 @@ def fast_bench(folder: Path) -> Iterator[Path]:
             os.environ.pop(FOLDER_VARIABLE)
         else:
             os.environ[FOLDER_VARIABLE] = before
+
+
+def with_stage_on_tcp(bench: Bench) -> Bench:
+    """The stage on a socket: a pseudo-terminal is slower than either, and would hide the difference."""
+    stage = bench.instruments["stage"].model_copy(update={"address": "tcp://127.0.0.1:5028"})
+    return bench.model_copy(update={"instruments": bench.instruments | {"stage": stage}})
 
 
 def scan_of(points: int, store: Path) -> RunScan:
@@ -141,40 +147,39 @@ def memory_of(process: psutil.Process) -> int:
 
 
 def bare_loop(bench: Path, points: int) -> Timed:
-    """What a short script does: move, trigger, read into memory, with pyserial and PyVISA as they come."""
-    profile = load_bench(bench)
-    address = profile.instruments["oscilloscope"].address
-    host, port = address.removeprefix("tcp://").split(":")
+    """What a short script does: move, trigger, read into memory, with PyVISA as it comes."""
+    instruments = load_bench(bench).instruments
     manager = pyvisa.ResourceManager("@py")
-    scope: Any = manager.open_resource(f"TCPIP::{host}::{port}::SOCKET")
-    scope.read_termination = scope.write_termination = "\n"
-    generator: Any = manager.open_resource(
-        "TCPIP::{}::{}::SOCKET".format(*profile.instruments["generator"].address.removeprefix("tcp://").split(":"))
+    scope, generator, stage = (
+        socket_of(manager, instruments[r].address) for r in ("oscilloscope", "generator", "stage")
     )
-    generator.read_termination = generator.write_termination = "\n"
-    device = profile.instruments["stage"].address.removeprefix("serial://")
     kept = []
     try:
-        with serial.Serial(device, timeout=5) as stage:
-            generator.write("SOUR:FREQ 2.25E6;VOLT 10;BURS:NCYC 12;INT:PER 0.002;:SOUR:BURS:STAT ON;:OUTP ON")
-            generator.query("*OPC?")
-            stage.write(b"$H\n")
-            while stage.readline() != b"ok\n":
-                pass
-            scope.write(":ACQ:POIN 10000;SRAT 250E6;:CHAN1:RANG 0.4;:WAV:FORM WORD;BYT MSBF;UNS 0")
-            begun = time.perf_counter()
-            for i in range(points):
-                stage.write(f"G90 G21 G0 X0.0000 Y0.0000 Z120.0000 B{i % 91 - 45:.4f} C0.0000\n".encode())
-                if stage.readline() != b"ok\n":
-                    raise RuntimeError("the stage refused a move")
-                scope.query(":INIT;*OPC?")
-                kept.append(scope.query_binary_values(":WAV:DATA?", "h", is_big_endian=True, container=np.array))
-            seconds = time.perf_counter() - begun
-            generator.write("OUTP OFF")
-            generator.query("*OPC?")
+        generator.write("SOUR:FREQ 2.25E6;VOLT 10;BURS:NCYC 12;INT:PER 0.002;:SOUR:BURS:STAT ON;:OUTP ON")
+        generator.query("*OPC?")
+        if stage.query("$H") != "ok":
+            raise RuntimeError("the stage was not homed")
+        scope.write(":ACQ:POIN 10000;SRAT 250E6;:CHAN1:RANG 0.4;:WAV:FORM WORD;BYT MSBF;UNS 0")
+        begun = time.perf_counter()
+        for i in range(points):
+            if stage.query(f"G90 G21 G0 X0.0000 Y0.0000 Z120.0000 B{i % 91 - 45:.4f} C0.0000") != "ok":
+                raise RuntimeError("the stage refused a move")
+            scope.query(":INIT;*OPC?")
+            kept.append(scope.query_binary_values(":WAV:DATA?", "h", is_big_endian=True, container=np.array))
+        seconds = time.perf_counter() - begun
+        generator.write("OUTP OFF")
+        generator.query("*OPC?")
     finally:
-        scope.close()
-        generator.close()
+        for resource in (scope, generator, stage):
+            resource.close()
     if len(kept) != points or any(w.size != SAMPLES for w in kept):
         raise RuntimeError("the bare loop lost waveforms")
     return Timed(points, seconds, 0)
+
+
+def socket_of(manager: pyvisa.ResourceManager, address: str) -> Any:
+    """A socket resource with the terminations that most scripts set."""
+    host, port = address.removeprefix("tcp://").split(":")
+    resource: Any = manager.open_resource(f"TCPIP::{host}::{port}::SOCKET")
+    resource.read_termination = resource.write_termination = "\n"
+    return resource
