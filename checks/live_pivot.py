@@ -3,12 +3,12 @@
 from __future__ import annotations
 
 from collections.abc import Iterable
-from math import cos, degrees, hypot, pi, sin, sqrt
+from math import cos, degrees, hypot, log, sin, sqrt
 
 import numpy as np
 
 from checks.arrival import Arrival, ArrivalTracker
-from checks.element import X_6DB
+from checks.directivity import beam_w
 from checks.finding import Change, Finding, Severity, Size
 from checks.observation import Circumstances, Observation
 from checks.pivot import PivotEstimate, PivotFit
@@ -22,6 +22,15 @@ LEVEL_MATTERS_DB = 0.1
 ANGLE_MATTERS = 2e-3  # rad: the element looks at the source under another angle
 STEP_MATTERS_M = 20e-6
 STEP_POINTS = 3  # in a row, to one side
+NEPER_DB = 20 / log(10)
+BEAM_KNOWN_DB = 20.0  # beyond this the Gaussian is no estimate of the beam
+
+
+def _up_to(level_db: float) -> str:
+    """A level error in words."""
+    if level_db > BEAM_KNOWN_DB:
+        return f"more than {decibel(BEAM_KNOWN_DB)}"
+    return f"up to {decibel(level_db)}"
 
 
 class PivotCheck:
@@ -32,8 +41,9 @@ class PivotCheck:
     whose quantile has a closed form. Threshold: false alarms per scan shared out over its points.
 
     It speaks when the offset is significant *and* moves the wanted result: the element swings through the beam,
-    whose width at the highest wanted frequency is taken from that of a piston (2 x 2.21 z/(k a), linear theory),
-    or it sees the source under another angle.
+    whose width at the highest wanted frequency is estimated from that of a piston (`checks.directivity.beam_w`),
+    or it sees the source under another angle. Where both components are there, the swing is not the same on both
+    sides: such an asymmetry is told here, as a consequence, and not once more as an error of angle zero.
 
     A jump: the arrival of one point against what the fit of the ones before it expects there, over the standard
     deviation of that expectation; Student's t with n - 4 degrees of freedom, three in a row to one side.
@@ -106,22 +116,31 @@ class PivotCheck:
         freedom = fit.points - 4
         statistic = float(np.array([fit.x_m, fit.z_m]) @ np.linalg.solve(fit.covariance, [fit.x_m, fit.z_m]))
         threshold = freedom * (self._rate ** (-2 / freedom) - 1)
-        level, turned = self._consequence(fit)
+        level, _, turned = self._consequence(fit)
         matters = level >= LEVEL_MATTERS_DB * ease or turned >= ANGLE_MATTERS * ease
         if statistic <= threshold * ease or not matters:
             return None
-        return self._say(fit, level, turned, at)
+        return self._say(fit, at)
 
-    def _consequence(self, fit: PivotEstimate) -> tuple[float, float]:
-        """Level error in dB at the highest wanted frequency and the largest angle, and angle error in rad."""
-        c = self._c
-        swing = max(abs(fit.x_m * (cos(t) - 1) + fit.z_m * sin(t)) for t in (self._largest, -self._largest))
-        k = 2 * pi * c.highest_wanted_hz / self._fit.speed_m_s
-        half_width = X_6DB * c.distance_m / (k * c.source_radius_m)
-        return 6.0 * (swing / half_width) ** 2, swing / c.distance_m
+    def _consequence(self, fit: PivotEstimate) -> tuple[float, float, float]:
+        """At the highest wanted frequency and the largest angle: level error and difference of the sides in dB.
 
-    def _say(self, fit: PivotEstimate, level_db: float, turned: float, at: int) -> Finding:
+        The third is the angle error in rad. A Gaussian beam: the level falls by exp(-X²/w²).
+        """
         c = self._c
+        right, left = (fit.x_m * (cos(t) - 1) + fit.z_m * sin(t) for t in (self._largest, -self._largest))
+        swing = max(abs(right), abs(left))
+        w = float(beam_w(np.array([c.highest_wanted_hz]), c)[0])
+        return (
+            NEPER_DB * (swing / w) ** 2,
+            NEPER_DB * abs(right**2 - left**2) / w**2,
+            swing / c.distance_m,
+        )
+
+    def _say(self, fit: PivotEstimate, at: int) -> Finding:
+        c = self._c
+        level_db, sides_db, turned = self._consequence(fit)
+        uneven = f", left and right differ by {_up_to(sides_db)}" if sides_db >= LEVEL_MATTERS_DB else ""
         ux, uz = sqrt(fit.covariance[0, 0]), sqrt(fit.covariance[1, 1])
         x, z = c.pivot_x_m + fit.x_m, c.pivot_z_m + fit.z_m
         left = " left after the correction" if (c.pivot_x_m or c.pivot_z_m) else ""
@@ -133,8 +152,8 @@ class PivotCheck:
             f"x = {mm(fit.x_m, ux)}, z = {mm(fit.z_m, uz)}",
             sizes=(Size("x", fit.x_m, ux, "m"), Size("z", fit.z_m, uz, "m")),
             points=(self._first, at, fit.points),
-            consequence=f"at {degrees(self._largest):.0f}° the response at {mhz(c.highest_wanted_hz)} reads up to "
-            f"{decibel(level_db)} low, and the element sees the source {degrees(turned):.2g}° off",
+            consequence=f"at {degrees(self._largest):.0f}° the response at {mhz(c.highest_wanted_hz)} reads "
+            f"{_up_to(level_db)} low{uneven}, and the element sees the source {degrees(turned):.2g}° off",
             remedy=f"apply the pivot correction x_mm = {x * 1e3:.3f}, z_mm = {z * 1e3:.3f}, or move the sensor in its "
             f"holder by {-fit.x_m * 1e3:+.3f} mm along x and {-fit.z_m * 1e3:+.3f} mm along z",
         )
