@@ -8,6 +8,7 @@ from checks.live_drift import DriftCheck
 from checks.live_motion import MotionCheck
 from checks.live_nulls import ElementNullCheck, SpectrumCheck
 from checks.live_pivot import PivotCheck
+from checks.live_reach import ReachCheck
 from checks.live_signal import RangeCheck, SignalCheck
 from checks.observation import Circumstances
 
@@ -30,5 +31,6 @@ def make_checks(circumstances: Circumstances) -> list[Check]:
             PivotCheck(circumstances, rate),
             AngleCheck(circumstances, rate),
             ElementNullCheck(circumstances),
+            ReachCheck(circumstances),
         ]
     return checks
