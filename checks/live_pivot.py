@@ -18,7 +18,7 @@ from checks.wording import decibel, mhz, mm
 
 FEWEST = 12
 SETTLED = 10  # points after which a single arrival can be held against the fit
-LEVEL_MATTERS_DB = 0.1
+LEVEL_MATTERS_DB = 0.05  # at the largest angle; 0.6 % of the level
 ANGLE_MATTERS = 2e-3  # rad: the element looks at the source under another angle
 STEP_MATTERS_M = 20e-6
 STEP_POINTS = 3  # in a row, to one side
@@ -56,7 +56,8 @@ class PivotCheck:
         self._rate = false_alarm_rate
         self._tracker = ArrivalTracker(circumstances)
         self._plane = -1
-        self._fit = self._new_fit(speed_of_sound(20.0))
+        self._speed = speed_of_sound(20.0)
+        self._fit = self._new_fit(self._speed)
         self._estimate: PivotEstimate | None = None
         self._largest = 0.0
         self._first = 0
@@ -78,7 +79,7 @@ class PivotCheck:
             changes += self._offset.last_word()
             self._offset, self._estimate = Standing(), None
             self._plane, self._first = seen.plane, seen.index
-            self._fit = self._new_fit(speed_or(seen.temperature_c, self._fit.speed_m_s))
+            self._fit = self._new_fit(speed_or(seen.temperature_c, self._speed))
             self._largest, self._run, self._shift_s = 0.0, [], 0.0
         if not arrival.usable:
             return changes
@@ -102,7 +103,8 @@ class PivotCheck:
 
     def _at_first_temperature(self, arrival: Arrival, seen: Observation) -> float:
         """Arrival as it would be at the temperature of the first point."""
-        travel = self._c.distance_m / speed_or(seen.temperature_c, self._fit.speed_m_s)
+        self._speed = speed_or(seen.temperature_c, self._speed)
+        travel = self._c.distance_m / self._speed
         if self._warm_s is None:
             self._warm_s = travel
         return arrival.time_s - travel + self._warm_s
