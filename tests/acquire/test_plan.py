@@ -109,9 +109,7 @@ def test_planes_roll_the_sensor_and_have_their_own_reference() -> None:
 
 
 def test_repeats_run_to_and_fro() -> None:
-    points = plan(
-        rotation={"span_deg": 40, "step_deg": 20, "order": "one-way", "repeats": 2}, revisit_every=0
-    ).points
+    points = plan(rotation={"span_deg": 40, "step_deg": 20, "order": "one-way", "repeats": 2}, revisit_every=0).points
     assert [round(math.degrees(p.pose[3])) for p in points] == [-20, 0, 20, 20, 0, -20]
 
 

@@ -27,9 +27,7 @@ def rotation_about(axis: np.ndarray, angle: float) -> np.ndarray:
 def test_element_centre_stays_within_a_micrometre_of_where_it_was_sent(pivot: Pivot, pose: Five) -> None:
     # where the mechanics put it, worked out with matrices and not with the code under test
     x, y, z, theta, phi = pivot.carriage_for(pose)
-    lean = rotation_about(np.array([0, 0, 1.0]), pivot.tilt_z) @ rotation_about(
-        np.array([1.0, 0, 0]), pivot.tilt_x
-    )
+    lean = rotation_about(np.array([0, 0, 1.0]), pivot.tilt_z) @ rotation_about(np.array([1.0, 0, 0]), pivot.tilt_x)
     turn = rotation_about(lean @ np.array([0, 1.0, 0]), theta) @ rotation_about(np.array([0, 0, 1.0]), phi)
     e = np.array(pivot.offset)
     element = np.array([x, y, z]) + turn @ e - e

@@ -31,9 +31,7 @@ STARTED = ScanStarted(
 )
 
 
-def point(
-    index: int, theta_deg: float, amplitudes: list[float], reference: bool = False, x: float = 0.0
-) -> PointSeen:
+def point(index: int, theta_deg: float, amplitudes: list[float], reference: bool = False, x: float = 0.0) -> PointSeen:
     return PointSeen(
         index=index,
         reference=reference,
