@@ -120,6 +120,8 @@ def peak_of(x_m: Vector, y_m: Vector, amplitude: Vector, down_db: float = 4.0) -
         raise MeasurementError("the map has no single top: check that the raster holds the beam's peak")
     turn = -np.linalg.inv(curvature)
     at = turn @ np.array([bx, by])
+    if not (x.min() <= at[0] <= x.max() and y.min() <= at[1] <= y.max()):
+        raise MeasurementError("the map rises up to its border: shift the raster so that it holds the beam's peak")
     residual = z - model @ solution
     freedom = max(1, z.size - 6)
     covariance = np.linalg.pinv(model.T @ model)[1:3, 1:3] * float(residual @ residual) / freedom

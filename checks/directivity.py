@@ -154,15 +154,27 @@ class HalfAngle:
 
 
 def half_angle(plane: PlaneResponse, line: int, level_db: float) -> HalfAngle:
-    """First crossing of a level on each side of angle zero at one frequency, by a monotone cubic."""
+    """First crossing of a level on each side of angle zero at one frequency, by a monotone cubic.
+
+    The level counts from normal incidence. Where the stage's zero is off by m, the reference lies below that by
+    about level (m/h)² for a half-width h (the main lobe is nearly a parabola in dB; derived), which is put right.
+    """
     ratio = plane.amplitude[:, line] / plane.reference[line]
     sigma = plane.sigma[:, line] / abs(plane.reference[line])
     rows = np.isfinite(ratio)
     theta, first = np.unique(np.round(plane.theta[rows], 9), return_index=True)
     means = np.array([ratio[rows][np.abs(plane.theta[rows] - t) < 1e-8].mean() for t in theta])
     spread = sigma[rows][first]
-    right, right_u = _crossing(theta, means, spread, level_db)
-    left, left_u = _crossing(-theta[::-1], means[::-1], spread[::-1], level_db)
+    half = _both(theta, means, spread, level_db)
+    if half.middle is None or not half.half_width:
+        return half
+    off = min(0.5, (half.middle / half.half_width) ** 2)
+    return _both(theta, means, spread, level_db * (1 - off))
+
+
+def _both(theta: Vector, ratio: Vector, sigma: Vector, level_db: float) -> HalfAngle:
+    right, right_u = _crossing(theta, ratio, sigma, level_db)
+    left, left_u = _crossing(-theta[::-1], ratio[::-1], sigma[::-1], level_db)
     return HalfAngle(None if left is None else -left, right, left_u, right_u)
 
 

@@ -38,7 +38,7 @@ class RadiusFit:
     Attributes:
         frequencies_hz, radius_m, radius_u_m, amplitude_v: shape (J,).
         angle_zero: rad, true zero as the stage counts, with its standard uncertainty.
-        reduced_chi2: of the fit; uncertainties are scaled by its root where it exceeds 1.
+        reduced_chi2: of the fit; uncertainties take the scatter that is seen where it exceeds the stated one.
         criterion: corrected Akaike criterion; smaller is better.
         model_u_m: the part of `radius_u_m` that all frequencies have in common.
     """
@@ -125,8 +125,7 @@ def _fit(plane: PlaneResponse, lines: NDArray[np.intp], speed_m_s: float, nomina
     chi2 = 2 * float(best.cost)
     freedom = max(1, total - parameters)
     final = jacobian(best.x)
-    information = final.T @ final
-    covariance = np.linalg.pinv(information) * max(1.0, chi2 / freedom)
+    covariance = _covariance(final.reshape(theta.size, count, parameters), residual(best.x).reshape(theta.size, count))
     spread = np.sqrt(np.diag(covariance))
     penalty = 2 * parameters + 2 * parameters * (parameters + 1) / max(1, total - parameters - 1)
     return RadiusFit(
@@ -141,6 +140,24 @@ def _fit(plane: PlaneResponse, lines: NDArray[np.intp], speed_m_s: float, nomina
         criterion=total * float(np.log(max(chi2, 1e-300) / total)) + penalty,
         points=total,
     )
+
+
+def _covariance(jacobian: Vector, residual: Vector) -> Vector:
+    """Covariance of the parameters, shape (P, P), from shapes (n, J, P) and (n, J), both over sigma.
+
+    What wanders from point to point (drive, water) moves all lines of a point together, so its points and not its
+    numbers count: least squares, with the covariance of the residuals between lines put between (a sandwich). A
+    line that scatters less than stated is taken as stated.
+    """
+    n, lines, parameters = jacobian.shape
+    freedom = max(1.0, n - parameters / lines)
+    between = residual.T @ residual / freedom
+    own = np.sqrt(np.maximum(np.diag(between), 1e-300))
+    between = between * np.outer(np.maximum(own, 1.0) / own, np.maximum(own, 1.0) / own)
+    flat = jacobian.reshape(n * lines, parameters)
+    bread = np.linalg.pinv(flat.T @ flat)
+    mixed = np.einsum("kl,ilp->ikp", between, jacobian).reshape(n * lines, parameters)
+    return np.asarray(bread @ (flat.T @ mixed) @ bread)
 
 
 def in_a_real_beam(fit: RadiusFit, c: Circumstances) -> RadiusFit:

@@ -1,0 +1,126 @@
+"""Directional response and radius from made-up scans whose truth is known."""
+
+from dataclasses import replace
+from functools import cache
+
+import numpy as np
+import pytest
+
+from checks.directivity import HalfAngle, PlaneResponse, half_angle, plane_responses, seen_from_the_source
+from checks.element import EDGES, Edge, angle_at_level
+from checks.errors import MeasurementError
+from checks.observation import Circumstances
+from checks.radius import RadiusFit, fit_edges, fit_law, radii_from_angles, told_apart
+from tests.checks.synthetic import SPEED, Truth, rotation
+
+SEEDS = 40
+
+
+def response_of(truth: Truth, seed: int, span: float = 80.0, step: float = 2.0, lines: int = 8) -> PlaneResponse:
+    c, seen = rotation(truth, seed, span, step, lines)
+    return plane_responses(seen, c)[0]
+
+
+@cache
+def fits_of(edge: Edge, seeds: int = SEEDS) -> list[list[RadiusFit]]:
+    truth = Truth(edge=edge, angle_zero=np.radians(0.7), wander=2e-3, flutter=0.0)
+    return [fit_edges(response_of(truth, seed), SPEED, 0.2e-3) for seed in range(seeds)]
+
+
+@pytest.mark.parametrize("edge", EDGES)
+def test_the_edge_behaviour_is_found_from_the_data(edge: Edge) -> None:
+    for fits in fits_of(edge, 6):
+        assert fits[0].edge == edge
+        assert told_apart(fits)
+
+
+def test_radius_and_angle_zero_lie_within_their_uncertainty_as_often_as_they_say() -> None:
+    pulls, zeros = [], []
+    for fits in fits_of("soft"):
+        fit = next(f for f in fits if f.edge == "soft")
+        pulls += list((fit.radius_m - 0.2e-3) / fit.radius_u_m)
+        zeros.append((fit.angle_zero - np.radians(0.7)) / fit.angle_zero_u)
+    # lines of a scan share the wander of its points, so there are some 40 independent draws, not 320: the rms of
+    # 40 standard normal draws lies between 0.65 and 1.35 but for one case in a thousand (chi-squared, 40)
+    for pull in (np.array(pulls), np.array(zeros)):
+        assert 0.5 < np.sqrt(np.mean(pull**2)) < 1.4
+        assert np.mean(np.abs(pull) < 2) > 0.9
+
+
+def test_a_pattern_that_is_hardly_seen_does_not_tell_the_edges_apart() -> None:
+    # ±8° only, noisy: the cosine factors differ by less than 1 %
+    fits = [fit_edges(response_of(Truth(wander=1e-2), s, span=16, step=1.0, lines=4), SPEED, 0.2e-3) for s in range(6)]
+    assert sum(told_apart(f) for f in fits) <= 1
+
+
+def test_the_wrong_edge_behaviour_shows_as_a_radius_that_falls_like_a_law() -> None:
+    # to leading order a² = a0² + (c/(pi f))² when a soft edge is taken for a rigid one (derived)
+    fits = fits_of("soft", 6)
+    for found in fits:
+        right, wrong = (fit_law(next(f for f in found if f.edge == e)) for e in ("soft", "rigid"))
+        assert right is not None
+        assert wrong is not None
+        assert wrong.term_m2_hz2 > 2 * np.sqrt(wrong.covariance[1, 1])
+        assert 0.3 < wrong.term_m2_hz2 / (SPEED / np.pi) ** 2 < 1.2
+        assert abs(right.term_m2_hz2) < 4 * np.sqrt(right.covariance[1, 1])
+        radius, _ = right.at(np.array([5e6]))
+        assert radius[0] == pytest.approx(0.2e-3, rel=0.02)
+
+
+@pytest.mark.parametrize("seed", range(8))
+def test_half_angles_free_of_the_zero_and_radii_as_the_standard_takes_them(seed: int) -> None:
+    zero = np.radians(1.0)
+    plane = response_of(Truth(angle_zero=zero, wander=1e-3), seed, step=1.0)
+    for line in (2, 5):
+        ka = 2 * np.pi * plane.frequencies_hz[line] / SPEED * 0.2e-3
+        for level in (-3.0, -6.0):
+            half, expected = half_angle(plane, line, level), angle_at_level(ka, level, "rigid")
+            assert half.half_width is not None
+            assert half.middle is not None
+            assert expected is not None
+            allowed = 4 * half.half_width_u + 2e-3 * expected  # and what the curve between points leaves
+            assert abs(half.half_width - expected) < allowed
+            assert abs(half.middle - zero) < allowed
+    by_angle = {round(r.frequency_hz / 1e6, 2): r for r in radii_from_angles(plane, SPEED)}
+    found = by_angle[13.5]
+    assert found.mean_m == pytest.approx(0.2e-3, rel=0.01)
+    assert by_angle[2.25].a6_m is None  # ka = 1.9: a rigid disc never falls by 6 dB
+    assert by_angle[2.25].mean_m is None
+
+
+def test_levels_that_are_not_reached_give_none() -> None:
+    plane = response_of(Truth(radius_m=1e-4), 1, span=20)
+    assert half_angle(plane, 0, -3.0) == HalfAngle(None, None)
+
+
+def test_the_response_is_signed_past_a_null() -> None:
+    plane = response_of(Truth(radius_m=0.5e-3, noise_v=1e-7), 1, step=1.0)
+    ratio = plane.amplitude / plane.reference
+    lobe = ratio[:, 7].min()
+    assert 20 * np.log10(-lobe) == pytest.approx(-17.57, abs=0.15)  # first side lobe of a disc
+
+
+def test_an_offset_is_put_right_by_its_own_size() -> None:
+    truth = Truth(pivot_z_m=1e-3, pivot_x_m=-5e-4, noise_v=1e-7, wander=0.0, flutter=0.0)
+    c, seen = rotation(truth, 1, step=2.0, lines=8)
+    plane = plane_responses(seen, c)[0]
+    mended = seen_from_the_source(plane, truth.pivot_x_m, truth.pivot_z_m, c)
+    there = response_of(replace(truth, pivot_z_m=0.0, pivot_x_m=0.0), 1)
+    raw = np.abs(plane.amplitude / plane.reference - there.amplitude / there.reference).max()
+    at = mended.theta[:, None] * np.ones(8)
+    truth_there = np.array([np.interp(mended.theta, there.theta, there.amplitude[:, k]) for k in range(8)]).T
+    left = np.abs(mended.amplitude / mended.reference - truth_there / there.reference)[np.abs(at) < 0.6].max()
+    assert left < raw / 5
+
+
+def test_without_angles_or_signal_there_is_one_clear_line() -> None:
+    c: Circumstances
+    c, seen = rotation(Truth(), 1, step=2.0, lines=4)
+    with pytest.raises(MeasurementError, match="5 angles or more"):
+        plane_responses(seen[:4], c)
+    silent = [replace(o, components=np.zeros(4, complex)) for o in seen]
+    with pytest.raises(MeasurementError, match="is the source on"):
+        plane_responses(silent, c)
+    noisy = [replace(o, component_noise_v=np.full(4, 0.02)) for o in seen]
+    with pytest.raises(MeasurementError):
+        fit_edges(plane_responses(noisy, c)[0], SPEED, 0.2e-3)
