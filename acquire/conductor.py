@@ -82,7 +82,7 @@ class Conductor:
         self._answer_due = False
         self._source_on = False
         self._reconnects = 0
-        self._there: PlanPoint | None = None  # where the stage stands already, before the first point
+        self._there: tuple[PlanPoint, Where] | None = None  # where the stage stands before the first point
         self.done = 0
         self.planned = 0
 
@@ -160,8 +160,7 @@ class Conductor:
             self._publish(Notice(text="homing the stage: its position is not known"))
             stage.home(HOMING_S, self._control.stop_asked)
         self._start(plan.points[0])
-        self._arrive(plan.points[0])
-        self._there = plan.points[0]
+        self._there = (plan.points[0], self._arrive(plan.points[0]))
 
     def _choose_range(self, wanted: CaptureSettings) -> CaptureSettings:
         """The range of the scan, or the one that the first point asks for."""
@@ -186,7 +185,7 @@ class Conductor:
         first = self.done
         self._state("running")
         try:
-            if points and points[0] is not self._there:
+            if points and not self._stands_at(points[0]):
                 self._start(points[0])
             for at, point in enumerate(points):
                 self._between(recorder)
@@ -232,7 +231,7 @@ class Conductor:
                 self._start(point)
 
     def _point(self, point: PlanPoint, following: PlanPoint | None, started: float) -> tuple[PointRecord, Trace]:
-        before = self._where(self._i.stage.position()) if point is self._there else self._arrive(point)
+        before = self._there[1] if self._there and self._stands_at(point) else self._arrive(point)
         self._there = None
         if self._job.scan.capture.dwell_ms:
             sleep(self._job.scan.capture.dwell_ms * MS)
@@ -286,6 +285,9 @@ class Conductor:
         """Send the stage off; where there is backlash to take up, first to a place below the target."""
         target = self._target(point)
         self._i.stage.start_move(self._approach(target) or target)
+
+    def _stands_at(self, point: PlanPoint) -> bool:
+        return self._there is not None and self._there[0] is point
 
     def _arrive(self, point: PlanPoint) -> Where:
         stage, target = self._i.stage, self._target(point)

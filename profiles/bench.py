@@ -25,9 +25,7 @@ class Attached(Model):
     @classmethod
     def _known_scheme(cls, value: str) -> str:
         if not ADDRESS.match(value):
-            raise ValueError(
-                f"{value!r} is no address; allowed: tcp://HOST:PORT, serial:///dev/NAME, visa://RESOURCE"
-            )
+            raise ValueError(f"{value!r} is no address; allowed: tcp://HOST:PORT, serial:///dev/NAME, visa://RESOURCE")
         return value
 
 
@@ -128,8 +126,7 @@ class Bench(Profile):
             problems.append("axes: at least one axis is needed")
         addresses = [a.address for a in self.instruments.values()]
         problems += [
-            f"instruments: address {a} is given twice"
-            for a in sorted({a for a in addresses if addresses.count(a) > 1})
+            f"instruments: address {a} is given twice" for a in sorted({a for a in addresses if addresses.count(a) > 1})
         ]
         if problems:
             raise ValueError("; ".join(problems))

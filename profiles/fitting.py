@@ -36,9 +36,7 @@ def _axes(scan: Scan, bench: Bench) -> list[str]:
         wanted = ["theta"] + (["phi"] if set(scan.rotation.planes_deg) != {0.0} else [])
     else:
         wanted = [d.axis for d in scan.raster.directions] if scan.raster else []
-    problems += [
-        f"scan {scan.name}: needs axis {a}; bench {bench.name} has not" for a in wanted if a not in present
-    ]
+    problems += [f"scan {scan.name}: needs axis {a}; bench {bench.name} has not" for a in wanted if a not in present]
     theta = bench.axes.theta
     if scan.rotation is not None and theta is not None:
         r = scan.rotation

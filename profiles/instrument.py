@@ -119,15 +119,11 @@ class Instrument(Profile):
     def _commands_fit_the_family(self) -> Instrument:
         families = ACTIONS[self.role]
         if self.family not in families:
-            raise ValueError(
-                f"family: {self.family!r} is not one for role {self.role}; allowed: {', '.join(families)}"
-            )
+            raise ValueError(f"family: {self.family!r} is not one for role {self.role}; allowed: {', '.join(families)}")
         wanted = families[self.family]
         problems = [f"commands.{a}: missing" for a in wanted if a not in self.commands]
         problems += [
-            f"commands.{a}: unknown; allowed: {', '.join(wanted) or 'none'}"
-            for a in self.commands
-            if a not in wanted
+            f"commands.{a}: unknown; allowed: {', '.join(wanted) or 'none'}" for a in self.commands if a not in wanted
         ]
         for action, template in self.commands.items():
             if action not in wanted:
@@ -135,9 +131,7 @@ class Instrument(Profile):
             allowed = wanted[action]
             for _, field, _, _ in Formatter().parse(template):
                 if field is not None and field not in allowed:
-                    problems.append(
-                        f"commands.{action}: {{{field}}} unknown; allowed: {', '.join(allowed) or 'none'}"
-                    )
+                    problems.append(f"commands.{action}: {{{field}}} unknown; allowed: {', '.join(allowed) or 'none'}")
         is_scope = self.role == "oscilloscope"
         problems += [
             f"{key}: {'missing, an oscilloscope needs it' if is_scope else 'only for an oscilloscope'}"

@@ -30,9 +30,7 @@ class Capture(Model):
     start_us: NonNegative | None = Field(
         default=None, description="start of the record after the trigger; left out: lead_us before the expected arrival"
     )
-    full_scale_v: Positive | None = Field(
-        default=None, description="left out: found by autorange at the first point"
-    )
+    full_scale_v: Positive | None = Field(default=None, description="left out: found by autorange at the first point")
     dwell_ms: NonNegative = Field(default=0.0, description="extra wait after the stage is still")
 
 
@@ -44,9 +42,7 @@ class Rotation(Model):
     )
     step_deg: Annotated[float, Field(gt=0, le=90)] | None = None
     angles_deg: Annotated[tuple[Annotated[float, Field(ge=-90, le=90)], ...], Field(min_length=3)] | None = None
-    highest_mhz: Positive | None = Field(
-        default=None, description="choose the step so that this frequency is resolved"
-    )
+    highest_mhz: Positive | None = Field(default=None, description="choose the step so that this frequency is resolved")
     planes_deg: Annotated[tuple[Annotated[float, Field(ge=-180, le=180)], ...], Field(min_length=1)] = (0.0,)
     order: RotationOrder = "interleaved"
     repeats: Annotated[int, Field(ge=1, le=1000)] = 1

@@ -14,9 +14,7 @@ class Source(Profile):
 
     kind: Literal["source"]
     radius_mm: Positive
-    focal_length_mm: Positive | None = Field(
-        default=None, description="radius of curvature; left out: a plane source"
-    )
+    focal_length_mm: Positive | None = Field(default=None, description="radius of curvature; left out: a plane source")
     frequency_mhz: Positive
     cycles: Annotated[int, Field(ge=1, le=100_000)]
     drive_v: Positive = Field(description="peak-to-peak amplitude asked of the generator")

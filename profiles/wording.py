@@ -9,7 +9,7 @@ from typing import Any, get_args
 
 from pydantic import BaseModel, ValidationError
 
-UNIT = re.compile(r"_(?:deg|rad|mrad|mm|um|m|cm|mhz|khz|hz|ghz|us|ns|ms|s|v|mv|uv|c|k|per_s2?|kpa|pa)+$")
+UNIT = re.compile(r"(?:_(?:deg|rad|mrad|mm|um|m|cm|mhz|khz|hz|ghz|us|ns|ms|s|s2|v|mv|uv|c|k|per|kpa|pa))+$")
 BOUNDS = {
     "greater_than": ("gt", "more than"),
     "greater_than_equal": ("ge", "at least"),

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections import deque
-from collections.abc import Callable, Mapping
+from collections.abc import Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -59,7 +59,6 @@ class Replay:
         self._served = 0
         self._pose: Key | None = None
         self._captured = False  # during this visit
-        self._in_memory = False  # captured, and not yet transferred
 
     def _find(self, pose: Pose) -> Key | None:
         key = _key(pose)
@@ -89,11 +88,11 @@ class Replay:
         return self._left[self._pose][0] if self._pose is not None and self._left[self._pose] else None
 
     def reported(self) -> Floats | None:
-        """What the stage reported: after the capture while it waits for its transfer, otherwise before it."""
+        """What the stage reported before the capture and, once there was one at this visit, after it."""
         here = self._here()
         if not self.strict or here is None:
             return None
-        stored: Floats = (self.bank.reported_after if self._in_memory else self.bank.reported_before)[here]
+        stored: Floats = (self.bank.reported_after if self._captured else self.bank.reported_before)[here]
         return stored
 
     def temperature_c(self) -> float:
@@ -114,12 +113,8 @@ class Replay:
         here = self._here() if self.strict else self._served % len(self.bank)
         assert here is not None
         self._served = here + 1 if self.strict else self._served + 1
-        self._captured = self._in_memory = True
+        self._captured = True
         return here
-
-    def transferred(self) -> None:
-        """The capture has left the oscilloscope."""
-        self._in_memory = False
 
 
 @dataclass(frozen=True)
@@ -128,7 +123,6 @@ class BankCapture:
 
     bank: Bank
     index: int
-    transferred: Callable[[], None]
     x_reference: int = 0
 
     @property
@@ -161,7 +155,6 @@ class BankCapture:
 
     def codes(self, channel: int, bits: int) -> Codes:  # noqa: ARG002
         """As stored, widened if need be; raises -221 when the samples asked for are too narrow."""
-        self.transferred()
         counts: Codes = self.bank.counts[self.index]
         if bits < 8 * counts.dtype.itemsize:
             raise ScpiError(-221, "the bank holds 16-bit samples")
@@ -189,7 +182,7 @@ class BankSource:
 
     def take(self, shot: Shot) -> BankCapture:  # noqa: ARG002
         """The next one."""
-        return BankCapture(self._replay.bank, self._replay.serve(), self._replay.transferred)
+        return BankCapture(self._replay.bank, self._replay.serve())
 
 
 class BankMotion(Motion):

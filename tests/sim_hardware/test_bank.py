@@ -146,8 +146,8 @@ def test_a_visit_serves_one_point_however_often_it_is_captured_and_none_when_it_
 
     before, after = (round(float(content[f"reported_{w}"][0, 0]) * 1e3, 4) for w in ("before", "after"))
     say(stage, move_words(content["carriage"][0]))
-    np.testing.assert_array_equal(counts(), content["counts"][0])  # a trial, read before the point itself
     assert report_x() == before
+    np.testing.assert_array_equal(counts(), content["counts"][0])  # a trial, read before the point itself
     assert say(scope, b":INIT;*OPC?\n") == b"1\n"
     assert report_x() == after
     assert say(scope, b":WAV:COUN?\n") == b"16\n"
