@@ -58,20 +58,24 @@ class Reducer:
     def reduce(self, counts: Sequence[Counts], metas: Sequence[PointMeta]) -> list[Observation]:
         """Observations of points of one aligned block of eight; `counts` are rows of shape (samples,)."""
         rows = [meta.index % ROWS for meta in metas]
-        self._block[:] = 0.0
+        if len(rows) < ROWS:
+            self._block[:] = 0.0
         whole = np.array(counts)
-        self._block[rows] = whole[:, self._gate]
+        inside = whole[:, self._gate]
+        self._block[rows] = inside
         product = (self._block @ self._matrix)[rows].astype(np.float64)
         quiet = whole[:, self._quiet].astype(np.float32)
         level = quiet.mean(axis=1, dtype=np.float64)
-        noise = quiet.std(axis=1, dtype=np.float64)
-        gated = self._block[rows] - level[:, None].astype(np.float32)
+        quiet -= level[:, None].astype(np.float32)
+        noise = np.sqrt(np.einsum("ij,ij->i", quiet, quiet).astype(np.float64) / quiet.shape[1])
+        gated = self._block[rows]
+        gated -= level[:, None].astype(np.float32)
         numbers = _Rows(
             parts=product - level[:, None] * self._leak,
             level=level,
             noise=noise,
-            top=gated.max(axis=1).astype(np.float64),
-            bottom=gated.min(axis=1).astype(np.float64),
+            top=inside.max(axis=1) - level,
+            bottom=inside.min(axis=1) - level,
             square=np.einsum("ij,ij->i", gated, gated).astype(np.float64),
             high=whole.max(axis=1),
             low=whole.min(axis=1),

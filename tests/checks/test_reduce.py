@@ -85,17 +85,27 @@ def test_rails_are_counted_over_the_whole_record_and_the_range_in_use_is_told() 
     assert seen.range_use == pytest.approx(0.25, abs=1e-4)
 
 
-@settings(max_examples=25, deadline=None)
-@given(st.integers(0, 2**32 - 1), st.lists(st.integers(1, ROWS - 1), max_size=4, unique=True), st.booleans())
-def test_how_points_are_batched_does_not_change_a_bit(seed: int, cuts: list[int], eight_bit: bool) -> None:
+@settings(max_examples=60, deadline=None)
+@given(
+    st.integers(0, 2**32 - 1),
+    st.lists(st.integers(1, ROWS - 1), max_size=4, unique=True),
+    st.booleans(),
+    st.integers(0, 33),
+    st.integers(0, 9),
+)
+def test_how_points_are_batched_does_not_change_a_bit(
+    seed: int, cuts: list[int], eight_bit: bool, longer: int, lines: int
+) -> None:
+    # odd lengths, so that rows do not start at round addresses
+    c = circumstances(lines=1 + lines, gate=Gate(801, 1600 + longer, 3, 700 - longer))
     rng = np.random.default_rng(seed)
     kind = np.int8 if eight_bit else np.int16
     info = np.iinfo(kind)
     block = rng.integers(info.min, info.max, (ROWS, SAMPLES), dtype=kind)
     metas = [meta(64 + i) for i in range(ROWS)]
-    whole = Reducer(WHOLE).reduce(list(block), metas)
+    whole = Reducer(c).reduce(list(block), metas)
     edges = [0, *sorted(cuts), ROWS]
-    reducer = Reducer(WHOLE)
+    reducer = Reducer(c)
     parts: list[Observation] = []
     for a, b in pairwise(edges):
         parts += reducer.reduce(list(block[a:b]), metas[a:b])
