@@ -6,12 +6,13 @@ Element centre at (ex, ez) from the axis of rotation at angle zero; a plane wave
 
 with d a slow drift along the order of visiting n (never the clock: a replay must agree). Linear least squares; the
 covariance is scaled by the observed residuals where they exceed the stated noise. Derived here; the curvature of
-the wave, X²/(2 L c), is put in by one more step.
+the wave, X²/(2 L c), is put in by one more step. Where the element has moved during the scan, a step is one more
+column: 0 before, 1 after.
 """
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -29,8 +30,9 @@ class PivotEstimate:
 
     Attributes:
         residual_sd_s: standard deviation of the arrivals about the fit.
+        step_s, step_u_s: the step and its standard uncertainty, None and 0 where none is in the model.
         coefficients, coefficient_covariance: shapes (J,) and (J, J), of the plain linear fit, before the
-            curvature of the wave is put in; in the order of `PivotFit.row`.
+            curvature of the wave is put in; in the order of `PivotFit.row`, and then the step.
     """
 
     x_m: float
@@ -42,10 +44,21 @@ class PivotEstimate:
     points: int
     coefficients: Vector
     coefficient_covariance: Vector
+    step_s: float | None = None
+    step_u_s: float = 0.0
+
+    @property
+    def freedom(self) -> int:
+        """Degrees of freedom of the residuals."""
+        return self.points - int(self.coefficients.size)
 
     def expected(self, row: Vector) -> tuple[float, float]:
-        """Arrival that the linear fit expects for one row of the model, and its standard deviation there, s."""
-        row = row[: self.coefficients.size]
+        """Arrival that the linear fit expects for one row of the model, and its standard deviation there, s.
+
+        Where a step is in the model, it is expected after that step.
+        """
+        size = self.coefficients.size
+        row = row[:size] if self.step_s is None else np.append(row[: size - 1], 1.0)
         shift = self.arrival_s - float(self.coefficients[0])
         spread = float(row @ self.coefficient_covariance @ row) + self.residual_sd_s**2
         return shift + float(row @ self.coefficients), float(np.sqrt(spread))
@@ -56,21 +69,61 @@ class PivotEstimate:
 
 
 @dataclass
-class PivotFit:
-    """Normal equations, one point at a time; memory and cost per point do not grow.
+class _Sums:
+    """Sums of least squares over some points."""
 
-    `order_scale` is the number of points planned; it only scales the drift column.
-    """
-
-    speed_m_s: float
-    distance_m: float
-    order_scale: int
     normal: Vector = field(default_factory=lambda: np.zeros((COLUMNS, COLUMNS)))
     moment: Vector = field(default_factory=lambda: np.zeros(COLUMNS))
     square: float = 0.0
     weight: float = 0.0
     points: int = 0
+
+    def add(self, row: Vector, value: float, weight: float) -> None:
+        self.normal += weight * np.outer(row, row)
+        self.moment += weight * value * row
+        self.square += weight * value**2
+        self.weight += weight
+        self.points += 1
+
+    def copy(self) -> _Sums:
+        return replace(self, normal=self.normal.copy(), moment=self.moment.copy())
+
+    def without(self, other: _Sums) -> _Sums:
+        """The points that are not in `other`."""
+        return _Sums(
+            self.normal - other.normal,
+            self.moment - other.moment,
+            self.square - other.square,
+            self.weight - other.weight,
+            self.points - other.points,
+        )
+
+    def shift(self, points: _Sums, step_s: float) -> None:
+        """As if the values of some of the points had been smaller by so much; the first column is 1."""
+        self.square += step_s * (step_s * points.normal[0, 0] - 2 * points.moment[0])
+        self.moment -= step_s * points.normal[:, 0]
+
+
+@dataclass
+class PivotFit:
+    """Normal equations, one point at a time; memory and cost per point do not grow.
+
+    `order_scale` is the number of points planned; it only scales the drift column. `taken_s` is what earlier steps
+    have moved the arrivals by, taken off those that come.
+    """
+
+    speed_m_s: float
+    distance_m: float
+    order_scale: int
+    sums: _Sums = field(default_factory=_Sums)
+    after: _Sums | None = None
     origin_s: float = 0.0
+    taken_s: float = 0.0
+
+    @property
+    def points(self) -> int:
+        """How many arrivals there are."""
+        return self.sums.points
 
     def row(self, theta: float, order: int) -> Vector:
         """Row of the model: constant, ex, ez, drift."""
@@ -83,29 +136,49 @@ class PivotFit:
             self.origin_s = arrival_s
         weight = 1.0 / (sigma_s**2 + TIMING_FLOOR_S**2)
         row = self.row(theta, order)
-        value = arrival_s - self.origin_s
-        self.normal += weight * np.outer(row, row)
-        self.moment += weight * value * row
-        self.square += weight * value**2
-        self.weight += weight
-        self.points += 1
+        value = arrival_s - self.origin_s - self.taken_s
+        self.sums.add(row, value, weight)
+        if self.after is not None:
+            self.after.add(row, value, weight)
+
+    def copy(self) -> PivotFit:
+        """The fit as it stands, to come back to."""
+        return replace(self, sums=self.sums.copy(), after=None if self.after is None else self.after.copy())
+
+    def stepped_after(self, before: PivotFit) -> PivotFit:
+        """A fit of the same points with a step after those of `before`, an earlier copy of this one.
+
+        A step that is in the model already is taken off as it is estimated before the new one.
+        """
+        fit, earlier = self.copy(), before.copy()
+        if before.after is not None and fit.after is not None:
+            estimate = before.estimate() or self.estimate()
+            step = estimate.step_s if estimate is not None and estimate.step_s is not None else 0.0
+            earlier.sums.shift(before.after, step)
+            fit.sums.shift(fit.after, step)
+            fit.taken_s += step
+        fit.after = fit.sums.without(earlier.sums)
+        return fit
 
     def estimate(self, drift: bool = True) -> PivotEstimate | None:
         """The fit so far, or None while the angles do not determine it."""
         kept = COLUMNS if drift else COLUMNS - 1
         if self.points < kept + 2:
             return None
-        scale = np.sqrt(np.diag(self.normal)[:kept])
+        normal, moment = self._equations(kept)
+        scale = np.sqrt(np.diag(normal))
         if (scale <= 0).any():
             return None
-        values, vectors = np.linalg.eigh(self.normal[:kept, :kept] / np.outer(scale, scale))
+        values, vectors = np.linalg.eigh(normal / np.outer(scale, scale))
         if values[0] < values[-1] / WORST_CONDITION:
             return None
         vectors = vectors / scale[:, None]
         inverse = (vectors / values) @ vectors.T
-        solution = inverse @ self.moment[:kept]
-        chi2 = max(0.0, self.square - float(solution @ self.moment[:kept]))
-        freedom = self.points - kept
+        solution = inverse @ moment
+        chi2 = max(0.0, self.sums.square - float(solution @ moment))
+        freedom = self.points - solution.size
+        if freedom < 1:
+            return None
         covariance = inverse * max(1.0, chi2 / freedom)
         _, x, z = solution[:3]
         # the curvature of the wave adds X^2/(2 L c), X = ex cos + ez sin; with sin^2 = 2 (1 - cos) and
@@ -118,13 +191,23 @@ class PivotFit:
             x_m=float(x),
             z_m=float(z),
             covariance=covariance[1:3, 1:3] + np.diag(model),
-            residual_sd_s=float(np.sqrt(chi2 / self.weight * self.points / freedom)),
+            residual_sd_s=float(np.sqrt(chi2 / self.sums.weight * self.points / freedom)),
             arrival_s=float(solution[0]) + self.origin_s,
             drift_s=float(solution[3]) if drift else 0.0,
             points=self.points,
             coefficients=solution,
             coefficient_covariance=covariance,
+            step_s=None if self.after is None else float(solution[-1]),
+            step_u_s=0.0 if self.after is None else float(np.sqrt(covariance[-1, -1])),
         )
+
+    def _equations(self, kept: int) -> tuple[Vector, Vector]:
+        """Normal matrix and moments, the step as a last column where there is one: its row is the constant's."""
+        normal, moment = self.sums.normal[:kept, :kept], self.sums.moment[:kept]
+        if self.after is None:
+            return normal, moment
+        column = self.after.normal[:kept, :1]
+        return np.block([[normal, column], [column.T, column[:1]]]), np.append(moment, self.after.moment[0])
 
 
 def fit_pivot(
