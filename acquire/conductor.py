@@ -159,8 +159,11 @@ class Conductor:
         if not stage.referenced():
             self._publish(Notice(text="homing the stage: its position is not known"))
             stage.home(HOMING_S, self._control.stop_asked)
-        self._start(plan.points[0])
-        self._there = (plan.points[0], self._arrive(plan.points[0]))
+        first = plan.points[0]
+        if self._job.scan.capture.full_scale_v is None and first.pose != plan.reference:
+            first = PlanPoint(-1, plan.reference, reference=True, plane=0)  # where the signal is strongest
+        self._start(first)
+        self._there = (first, self._arrive(first))
 
     def _choose_range(self, wanted: CaptureSettings) -> CaptureSettings:
         """The range of the scan, or the one that the first point asks for."""
@@ -168,7 +171,7 @@ class Conductor:
         if self._job.scan.capture.full_scale_v is not None:
             return scope.configure(wanted)
         chosen = autorange(wanted, scope.full_scales_v(), self._capture)
-        self._publish(Notice(text=f"vertical range {chosen.full_scale_v:g} V, found at the first point"))
+        self._publish(Notice(text=f"vertical range {chosen.full_scale_v:g} V, found at the reference point"))
         return scope.configure(chosen)
 
     def _capture(self, settings: CaptureSettings) -> Trace:

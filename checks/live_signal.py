@@ -64,7 +64,7 @@ class RangeCheck:
             sizes=(Size("clipped samples", float(self._samples), 0.0, "1"),),
             points=(self._first, self._last, self._count),
             consequence="peaks of these points are larger than read, and harmonics are false",
-            remedy="raise full_scale_v, or leave it out so that the range is found at the first point",
+            remedy="raise full_scale_v, or leave it out so that the range is found at the reference point",
         )
 
     def _say_poor(self, seen: Observation) -> Finding | None:
@@ -77,7 +77,7 @@ class RangeCheck:
             sizes=(Size("use of range", seen.range_use, 0.0, "1"),),
             points=(seen.index, seen.index, 1),
             consequence="the digitiser's own noise is larger than it need be",
-            remedy="lower full_scale_v, or leave it out so that the range is found at the first point",
+            remedy="lower full_scale_v, or leave it out so that the range is found at the reference point",
         )
 
 
