@@ -21,6 +21,8 @@ REPEATABILITY_FLOOR = 2e-4
 FEWEST_ANGLES = 5
 BEAM_EXPONENT = -0.75
 PISTON_SPEED = 1485.0  # m/s; a beam width need not be known better
+BEAM_KNOWN = 0.3  # relative uncertainty of a correction by exp(x) is so much of x: the width within 15 %
+FARTHEST = 4.0  # (X/w)² beyond which nothing is known of the beam: no larger correction is made
 
 
 @dataclass(frozen=True)
@@ -219,13 +221,17 @@ def seen_from_the_source(plane: PlaneResponse, x_m: float, z_m: float, c: Circum
     an angle smaller by X/L, and stands off the middle of the beam, whose level falls by exp(-X²/w²). It also goes
     along the beam by Z = ez (cos - 1) - ex sin, and the wave spreads as L/(L + Z). The width is that of a piston's
     far field, 2 x 2.21 L/(k a), and harmonic n is narrower by n^-3/4, between the quasi-linear n^-1/2 and the
-    linear n^-1 (derived; `checks.pivot` has the convention).
+    linear n^-1 (derived; `checks.pivot` has the convention). How well the width is known goes into `sigma`, so that
+    points far down the side of the beam lose their weight.
     """
     aside = x_m * (np.cos(plane.theta) - 1) + z_m * np.sin(plane.theta)
     along = z_m * (np.cos(plane.theta) - 1) - x_m * np.sin(plane.theta)
     spread = c.distance_m / (c.distance_m + along)
-    fallen = np.exp(-((aside[:, None] / beam_w(plane.frequencies_hz, c)) ** 2)) * spread[:, None]
-    return replace(plane, theta=plane.theta - aside / c.distance_m, amplitude=plane.amplitude / fallen)
+    off = np.minimum((aside[:, None] / beam_w(plane.frequencies_hz, c)) ** 2, FARTHEST)
+    fallen = np.exp(-off) * spread[:, None]
+    amplitude = plane.amplitude / fallen
+    sigma = np.hypot(plane.sigma / fallen, BEAM_KNOWN * off * np.abs(np.nan_to_num(amplitude)))
+    return replace(plane, theta=plane.theta - aside / c.distance_m, amplitude=amplitude, sigma=sigma)
 
 
 def decibels(ratio: float) -> float:
