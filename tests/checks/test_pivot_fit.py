@@ -5,6 +5,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 from numpy.typing import NDArray
+from scipy import stats
 
 from checks.pivot import PivotFit, fit_pivot
 from checks.wording import decibel, deg, mhz, mm, rounded
@@ -82,6 +83,20 @@ def test_the_expectation_of_one_more_arrival_scatters_as_it_says() -> None:
         pulls.append((t[30] - expected) / spread)
     # Student's t with 26 degrees of freedom: standard deviation 1.04; 300 draws know it to 4 %
     assert np.std(pulls) == pytest.approx(1.04, abs=0.16)
+
+
+def test_the_statistic_of_a_centred_element_is_hotellings() -> None:
+    # e' C^-1 e / 2 is F with 2 and n - 4 degrees of freedom when noise is white and its size is taken from residuals
+    theta, statistics = THETA[:24], []
+    for seed in range(500):
+        t = np.random.default_rng(seed).normal(8e-5, 1e-9, theta.size)
+        found = fit_pivot(theta, t, np.full(theta.size, 1e-12), ORDER[:24], SPEED, 1e6)
+        if found is None or found.points < theta.size:  # one beyond five standard deviations was left out
+            continue
+        e = np.array([found.x_m, found.z_m])
+        statistics.append(float(e @ np.linalg.solve(found.covariance, e)) / 2)
+    assert len(statistics) > 450
+    assert stats.kstest(statistics, stats.f(2, theta.size - 4).cdf).pvalue > 1e-3
 
 
 @pytest.mark.parametrize(

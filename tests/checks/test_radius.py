@@ -11,7 +11,7 @@ from checks.element import EDGES, Edge, angle_at_level
 from checks.errors import MeasurementError
 from checks.observation import Circumstances
 from checks.radius import RadiusFit, fit_edges, fit_law, radii_from_angles, told_apart
-from tests.checks.synthetic import SPEED, Truth, rotation
+from tests.checks.synthetic import SPEED, Truth, Vector, comb, pattern, rotation
 
 SEEDS = 40
 
@@ -45,6 +45,32 @@ def test_radius_and_angle_zero_lie_within_their_uncertainty_as_often_as_they_say
     for pull in (np.array(pulls), np.array(zeros)):
         assert 0.5 < np.sqrt(np.mean(pull**2)) < 1.4
         assert np.mean(np.abs(pull) < 2) > 0.9
+
+
+def test_stated_uncertainty_is_close_to_the_cramer_rao_bound() -> None:
+    """White noise only: the inverse Fisher information, from the pattern by differences, is the least possible."""
+    noise, radius, lines = 2e-4, 0.2e-3, 6
+    truth = Truth(noise_v=noise, wander=0.0, flutter=0.0, jitter_s=0.0)
+    planes = [response_of(truth, seed, lines=lines) for seed in range(12)]
+    fits = [next(f for f in fit_edges(p, SPEED, radius) if f.edge == "rigid") for p in planes]
+    theta, frequencies = planes[0].theta, planes[0].frequencies_hz
+    level = 0.05 * comb(np.arange(1.0, lines + 1))
+
+    def model(zero: float, radii: Vector) -> Vector:
+        columns = [pattern(theta - zero, frequencies[k : k + 1], radii[k], "rigid") for k in range(lines)]
+        return np.hstack(columns) * level
+
+    plain, each = np.full(lines, radius), np.eye(lines)
+    slopes = [(model(1e-6, plain) - model(-1e-6, plain)) / 2e-6]
+    slopes += [(model(0, plain + 1e-8 * e) - model(0, plain - 1e-8 * e)) / 2e-8 for e in each]
+    slopes += [model(0, plain) * e for e in each]
+    jacobian = np.array([d.ravel() for d in slopes]) / noise
+    bound = np.sqrt(np.diag(np.linalg.inv(jacobian @ jacobian.T)))
+    stated = np.mean([[f.angle_zero_u, *f.radius_u_m] for f in fits], axis=0)
+    assert np.all(stated / bound[: lines + 1] < 1.5)
+    assert np.all(stated / bound[: lines + 1] > 0.9)
+    pulls = np.array([(f.radius_m - radius) / f.radius_u_m for f in fits])
+    assert np.sqrt(np.mean(pulls**2)) == pytest.approx(1.0, abs=0.3)
 
 
 def test_a_pattern_that_is_hardly_seen_does_not_tell_the_edges_apart() -> None:
