@@ -40,7 +40,9 @@ from acquire.prepare import Job
 from profiles.bench import Bench
 from profiles.errors import ProfileError
 from profiles.fitting import misfits
-from profiles.load import load_instrument, validate
+from profiles.instrument import Instrument
+from profiles.load import validate
+from profiles.references import instruments_of
 from profiles.scan import Scan
 from profiles.sensor import Sensor
 from profiles.source import Source
@@ -68,8 +70,9 @@ class BenchUnusable(Exception):
 class Daemon:
     """State of the daemon; `answer` is what a request does, apart from any socket."""
 
-    def __init__(self, bench: Bench, thread: BenchThread) -> None:
+    def __init__(self, bench: Bench, thread: BenchThread, scope: Instrument) -> None:
         self._bench = bench
+        self._scope = scope
         self._thread = thread
         self._history: deque[bytes] = deque(maxlen=HISTORY)
         self._number = 0
@@ -117,7 +120,7 @@ class Daemon:
             return Refused(text=str(error))
         if not (isinstance(scan, Scan) and isinstance(sensor, Sensor) and isinstance(source, Source)):
             return Refused(text="the profiles are of the wrong kind")
-        problems = misfits(scan, self._bench, sensor, source)
+        problems = misfits(scan, self._bench, sensor, source, self._scope)
         if problems:
             return Refused(text="\n".join(problems))
         store = Path(request.store)
@@ -170,12 +173,13 @@ def serve(bench: Bench, endpoint: str, ready: Callable[[dict[str, str]], None]) 
 
     Raises:
         BenchUnusable: the instruments cannot be opened, or were not left safe.
+        ProfileError: a profile of an instrument is missing, wrong, or of another role.
         NoEndpoint: the endpoint cannot be used, or another daemon has it.
     """
-    profiles = {role: load_instrument(attached.profile) for role, attached in bench.instruments.items()}
+    profiles = instruments_of(bench)
     with sole_owner(checked(endpoint)), sockets(endpoint) as (requests, events), ending_signals() as signalled:
         thread = BenchThread(bench, profiles)
-        daemon = Daemon(bench, thread)
+        daemon = Daemon(bench, thread, profiles["oscilloscope"])
         thread.start()
         try:
             thread.ready.wait(OPENING_S)

@@ -26,6 +26,8 @@ class Attached(Model):
     def _known_scheme(cls, value: str) -> str:
         if not ADDRESS.match(value):
             raise ValueError(f"{value!r} is no address; allowed: tcp://HOST:PORT, serial:///dev/NAME, visa://RESOURCE")
+        if value.startswith("tcp://") and not 0 <= int(value.rpartition(":")[2]) <= 65_535:
+            raise ValueError(f"{value!r} has no such port; allowed: up to 65535")
         return value
 
 

@@ -2,9 +2,12 @@
 
 from __future__ import annotations
 
+import json
 import os
 import tomllib
 from collections.abc import Iterator, Mapping
+from copy import deepcopy
+from difflib import get_close_matches
 from importlib.resources import files
 from pathlib import Path
 from typing import Any, Literal, TypeVar
@@ -74,7 +77,9 @@ def find(kind: Kind, name_or_path: str | Path) -> Path:
     known = available(kind)
     if str(name_or_path) in known:
         return known[str(name_or_path)]
-    raise ProfileNotFound([f"no {kind} is called {name_or_path!r}; known: {', '.join(known) or 'none'}"])
+    close = get_close_matches(str(name_or_path), known, n=1)
+    meant = f"did you mean {close[0]}? " if close else ""
+    raise ProfileNotFound([f"no {kind} is called {str(name_or_path)!r}; {meant}known: {', '.join(known) or 'none'}"])
 
 
 def read(path: Path) -> dict[str, Any]:
@@ -96,16 +101,42 @@ def read(path: Path) -> dict[str, Any]:
 def validate(tables: Mapping[str, Any], kind: Kind, where: str = "") -> Profile:
     """The model of a profile. The `[simulation]` table of a bench is dropped before anything looks at it.
 
+    Types are taken at their word: text is no number, and `true` is no 1.
+
     Raises:
         ProfileError: with every problem, a line each.
     """
     model = MODELS[kind]
     kept = {key: value for key, value in tables.items() if not (kind == "bench" and key == "simulation")}
     try:
-        return model.model_validate(kept)
+        return _strict(model, kept)
     except ValidationError as error:
         prefix = f"{where}: " if where else ""
-        raise ProfileError([prefix + line for line in problems_of(error, model)]) from error
+        lines = problems_of(error, model) + _contradictions(error, model, kept)
+        raise ProfileError([prefix + line for line in dict.fromkeys(lines)]) from error
+
+
+def _strict(model: type[Profile], tables: Mapping[str, Any]) -> Profile:
+    """By way of JSON, which like TOML has lists and no tuples; so strictness still lets a list be a tuple."""
+    return model.model_validate_json(json.dumps(tables, default=str), strict=True)
+
+
+def _contradictions(error: ValidationError, model: type[Profile], tables: Mapping[str, Any]) -> list[str]:
+    """What pydantic does not look at while there are unknown keys: whether the known ones agree."""
+    unknown = [entry["loc"] for entry in error.errors(include_url=False) if entry["type"] == "extra_forbidden"]
+    if not unknown:
+        return []
+    known = deepcopy(dict(tables))
+    for *path, last in unknown:
+        table: Any = known
+        for part in path:
+            table = table[part]
+        del table[last]
+    try:
+        _strict(model, known)
+    except ValidationError as second:
+        return problems_of(second, model)
+    return []
 
 
 def load_any(path: Path) -> Profile:
@@ -126,6 +157,8 @@ def _load(kind: Kind, model: type[P], name_or_path: str | Path) -> P:
     profile = validate(read(path), kind, str(path))
     if not isinstance(profile, model):
         raise ProfileError([f"{path}: is no {kind}"])
+    if str(name_or_path) == path.stem != profile.name:
+        raise ProfileError([f"{path}: name: {profile.name!r} given; allowed: {path.stem!r}, as the file is called"])
     return profile
 
 

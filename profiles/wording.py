@@ -15,7 +15,22 @@ BOUNDS = {
     "greater_than_equal": ("ge", "at least"),
     "less_than": ("lt", "less than"),
     "less_than_equal": ("le", "at most"),
+    "too_short": ("min_length", "a list of at least this many:"),
+    "too_long": ("max_length", "a list of at most this many:"),
 }
+TYPES = {
+    "int_type": "a whole number",
+    "float_type": "a number",
+    "finite_number": "a finite number",
+    "string_type": "text in quotes",
+    "bool_type": "true or false",
+    "tuple_type": "a list in [ ]",
+    "dict_type": "a table",
+    "model_type": "a table",
+    "string_pattern_mismatch": "lower case letters, digits and hyphens, at most 64",
+}
+LONGEST_SHOWN = 60
+WHOLE_FILE = "the file"
 
 
 def problems_of(error: ValidationError, model: type[BaseModel]) -> list[str]:
@@ -28,7 +43,7 @@ def problems_of(error: ValidationError, model: type[BaseModel]) -> list[str]:
 
 
 def _lines(entry: Any, location: tuple[str, ...], model: type[BaseModel]) -> Iterator[str]:
-    key = ".".join(location) or "the file"
+    key = ".".join(location) or WHOLE_FILE
     kind, given, context = entry["type"], entry.get("input"), entry.get("ctx", {})
     if kind == "extra_forbidden":
         yield f"{key}: unknown key; {_instead(location, model)}"
@@ -36,15 +51,30 @@ def _lines(entry: Any, location: tuple[str, ...], model: type[BaseModel]) -> Ite
         yield f"{key}: missing"
     elif kind in BOUNDS:
         name, words = BOUNDS[kind]
-        yield f"{key}: {given!r} given; allowed: {words} {context[name]}"
+        counted = kind == "too_short" and len(given) >= context[name]
+        if not counted:  # a list that is long enough but has a wrong entry is told by that entry
+            yield f"{key}: {_shown(given)} given; allowed: {words} {_plain(context[name])}"
     elif kind == "literal_error":
-        yield f"{key}: {given!r} given; allowed: {context['expected']}"
+        yield f"{key.removesuffix('.[key]')}: {_shown(given)} given; allowed: {context['expected']}"
     elif kind == "value_error":
         prefix = f"{key}." if location else ""
         for part in re.split(r"; (?!allowed|give|use)", str(context["error"])):
             yield f"{prefix}{part}" if re.match(r"[a-z_.]+: ", part) else f"{key}: {part}"
+    elif kind in TYPES:
+        yield f"{key}: {_shown(given)} given; allowed: {TYPES[kind]}"
     else:
-        yield f"{key}: {given!r} given; {entry['msg'][0].lower()}{entry['msg'][1:]}"
+        yield f"{key}: {_shown(given)} given; {entry['msg'][0].lower()}{entry['msg'][1:]}"
+
+
+def _shown(given: Any) -> str:
+    """What was given, shortened where it is long."""
+    text = repr(given)
+    return text if len(text) <= LONGEST_SHOWN else text[: LONGEST_SHOWN - 4] + " ..."
+
+
+def _plain(bound: float) -> str:
+    """A bound without a needless decimal point."""
+    return f"{bound:g}" if abs(bound) < 1e6 else str(bound)
 
 
 def _instead(location: tuple[str, ...], model: type[BaseModel]) -> str:

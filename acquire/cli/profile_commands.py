@@ -19,10 +19,14 @@ class UserMistake(Exception):
 @app.command("list")
 def list_profiles() -> None:
     """All profiles: kind, name, title, and whether they are shipped or your own."""
+    from profiles.errors import ProfileError
     from profiles.load import every, read, shipped_folder
 
     for kind, name, path in every():
-        title = read(path).get("title", "")
+        try:
+            title = read(path).get("title", "")
+        except ProfileError as error:
+            title = f"UNUSABLE: {error}"
         origin = "shipped" if path.is_relative_to(shipped_folder()) else str(path)
         sys.stdout.write(f"{kind:<11} {name:<24} {title}  ({origin})\n")
 
@@ -43,29 +47,45 @@ def show(name: Annotated[str, typer.Argument(help="name of a profile, or its fil
 
 
 def lines_of(table: dict[str, object], prefix: str = "") -> list[str]:
-    """A line for each value, with its whole key; strings quoted as in TOML."""
+    """A line of TOML for each value, with its whole key."""
     found = []
     for key, value in table.items():
         if isinstance(value, dict):
             found += lines_of(value, f"{prefix}{key}.")
         else:
-            found.append(f"{prefix}{key} = {json.dumps(value, ensure_ascii=False)}")
+            found.append(f"{prefix}{key} = {_toml(value)}")
     return found
 
 
+def _toml(value: object) -> str:
+    """A value as TOML, on one line."""
+    if isinstance(value, dict):
+        return "{ " + ", ".join(f"{key} = {_toml(inner)}" for key, inner in value.items()) + " }"
+    if isinstance(value, list):
+        return "[" + ", ".join(_toml(inner) for inner in value) + "]"
+    return json.dumps(value, ensure_ascii=False)  # numbers, text and truth are written alike in both
+
+
 @app.command()
-def validate(files: Annotated[list[Path], typer.Argument(help="profile files")]) -> None:
-    """Check profiles; every problem is told at once."""
+def validate(
+    files: Annotated[list[Path], typer.Argument(help="profile files")],
+    bench: Annotated[str | None, typer.Option(help="whether scans can be done on this bench, too")] = None,
+) -> None:
+    """Check profiles and what they refer to; every problem is told at once."""
     from profiles.errors import ProfileError
     from profiles.load import load_any
+    from profiles.references import unmet, unmet_on
 
     problems: list[str] = []
     for file in files:
         try:
             profile = load_any(file)
+            wrong = unmet(profile) or (unmet_on(profile, bench) if bench else [])
         except ProfileError as error:
             problems += error.problems
-        else:
+            continue
+        problems += [f"{file}: {line}" for line in wrong]
+        if not wrong:
             sys.stdout.write(f"{file}: a valid {type(profile).__name__.lower()} profile\n")
     if problems:
         raise ProfileError(problems)
