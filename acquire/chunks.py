@@ -12,9 +12,11 @@ import numpy as np
 from numpy.typing import NDArray
 
 from acquire.journal import Journal
-from acquire.layout import CHUNK, WIDE_CHUNK, write_columns, write_counts
+from acquire.layout import WIDE_CHUNK, write_columns, write_counts
 from acquire.record import PointRecord
 from checks.observation import Observation
+
+MOST_PENDING = 3  # chunks that wait for the disk; beyond that the recorder waits too, and in the end the bench
 
 
 @dataclass
@@ -29,26 +31,31 @@ class ChunkWriter:
     def __post_init__(self) -> None:
         self._pool = ThreadPoolExecutor(1, "chunks")
         self._pending: list[Future[None]] = []
+        self.size = self.journal.chunk
         self._counts = self._fresh()
         self._records: list[PointRecord] = []
         self._wide: list[tuple[PointRecord, Observation]] = []
 
     def _fresh(self) -> NDArray[Any]:
-        return np.zeros((CHUNK, self.samples), self.dtype)
+        return np.zeros((self.size, self.samples), self.dtype)
 
     def place(self, index: int, counts: NDArray[Any]) -> NDArray[Any]:
         """Copy a point's counts into the chunk in hand; the row stays valid until the chunk is full."""
-        row: NDArray[Any] = self._counts[index % CHUNK]
+        row: NDArray[Any] = self._counts[index % self.size]
         row[:] = counts
         return row
 
-    def add(self, records: Sequence[PointRecord], seen: Sequence[Observation]) -> None:
-        """Points whose counts were placed, reduced; in order, within one chunk."""
+    def ends(self, index: int) -> bool:
+        """Whether the point is the last of a chunk."""
+        return index % self.size == self.size - 1
+
+    def add(self, records: Sequence[PointRecord], seen: Sequence[Observation], durable: bool = False) -> None:
+        """Points whose counts were placed, reduced; in order, within one chunk, which may be in the store already."""
         self._records += records
         self._wide += zip(records, seen, strict=True)
-        if self._records and self._records[-1].index % CHUNK == CHUNK - 1:
-            self._submit_counts()
-        if self._wide and self._wide[-1][0].index % WIDE_CHUNK == WIDE_CHUNK - 1:
+        if self.ends(records[-1].index):
+            self._submit_counts(durable)
+        if records[-1].index % WIDE_CHUNK == WIDE_CHUNK - 1:
             self._submit_columns()
         self._raise_failures()
 
@@ -70,9 +77,10 @@ class ChunkWriter:
         """End the thread."""
         self._pool.shutdown(cancel_futures=True)
 
-    def _submit_counts(self) -> None:
-        number, full, records = self._records[0].index // CHUNK, self._counts[: len(self._records)], self._records
-        self._pending.append(self._pool.submit(self._write, number, full, records))
+    def _submit_counts(self, durable: bool = False) -> None:
+        number, full, records = self._records[0].index // self.size, self._counts[: len(self._records)], self._records
+        if not durable:
+            self._pending.append(self._pool.submit(self._write, number, full, records))
         self._counts, self._records = self._fresh(), []
 
     def _submit_columns(self) -> None:
@@ -86,6 +94,8 @@ class ChunkWriter:
         self.journal.chunk_is_durable(number, records)
 
     def _raise_failures(self) -> None:
+        if len(self._pending) > MOST_PENDING:
+            self._pending.pop(0).result()
         done = [f for f in self._pending if f.done()]
         self._pending = [f for f in self._pending if not f.done()]
         for future in done:

@@ -80,10 +80,26 @@ class StoreHeader:
             "finding_changes": [],
         }
 
+    def continues(self, profiles: Mapping[str, Any]) -> bool:
+        """Whether it is of the same scan as these profiles; range and start of the record are found when it runs."""
+        return all(_same_scan(getattr(self, key), profiles[key]) for key in ("sensor", "source", "scan"))
+
     @classmethod
     def from_attributes(cls, attributes: Mapping[str, Any]) -> StoreHeader:
         """The header of a store that exists."""
         return cls(**attributes["profiles"], started_utc=attributes["started_utc"])
+
+
+def _same_scan(one: Mapping[str, Any], other: Mapping[str, Any]) -> bool:
+    found_anew = ("full_scale_v", "start_us")
+
+    def fixed(profile: Mapping[str, Any]) -> dict[str, Any]:
+        plain: dict[str, Any] = json.loads(json.dumps(profile))
+        if "capture" in plain:
+            plain["capture"] = {k: v for k, v in plain["capture"].items() if k not in found_anew}
+        return plain
+
+    return fixed(one) == fixed(other)
 
 
 def circumstances_as_mapping(circumstances: Circumstances) -> dict[str, Any]:

@@ -23,6 +23,7 @@ from acquire.record import PointRecord
 
 HEAD = struct.Struct("<4sIII")  # magic, length of the record, length of the counts, CRC of both
 MAGIC = b"TPJ1"
+LOG = "points.log"
 encode = msgspec.msgpack.Encoder().encode
 decode = msgspec.msgpack.Decoder(PointRecord).decode
 
@@ -42,18 +43,37 @@ def sync_folder(folder: Path) -> None:
 
 
 class Journal:
-    """Appends; nothing is safe before `sync` has returned."""
+    """Appends; nothing is safe before `sync` has returned.
 
-    def __init__(self, store: Path, chunk: int) -> None:
+    What is there already is kept up to point `points`; the rest, and a last entry that is not whole, is cut off, so
+    that what is appended now can be read later.
+    """
+
+    def __init__(self, store: Path, chunk: int, points: int = 0) -> None:
         self.folder = journal_folder(store)
         self.folder.mkdir(exist_ok=True)
-        self._chunk = chunk
+        self.chunk = chunk
+        self._cut_after(points)
+        (self.folder / LOG).touch()
+        sync_folder(self.folder)
+        sync_folder(self.folder.parent)
         self._segment: BinaryIO | None = None
         self._number = -1
 
+    def _cut_after(self, points: int) -> None:
+        for segment in self.folder.glob("segment-*.bin"):
+            if int(segment.stem.removeprefix("segment-")) * self.chunk >= points:
+                segment.unlink()
+        for path in self.folder.iterdir():
+            whole = sum(HEAD.size + len(record) + len(counts) for record, counts in _entries(path))
+            if whole < path.stat().st_size:
+                with path.open("r+b") as file:
+                    file.truncate(whole)
+                    os.fsync(file.fileno())
+
     def add(self, record: PointRecord, counts: NDArray[Any]) -> None:
         """Append a point."""
-        number = record.index // self._chunk
+        number = record.index // self.chunk
         if number != self._number:
             self._open_segment(number)
         if self._segment is None:
@@ -75,7 +95,7 @@ class Journal:
 
     def chunk_is_durable(self, number: int, records: list[PointRecord]) -> None:
         """The counts of a chunk are in the store: keep its records, drop its segment."""
-        with (self.folder / "points.log").open("ab", buffering=0) as log:
+        with (self.folder / LOG).open("ab", buffering=0) as log:
             for record in records:
                 _append(log, encode(record), b"")
             os.fdatasync(log.fileno())
@@ -100,8 +120,13 @@ def _append(file: BinaryIO, record: bytes, counts: bytes | memoryview) -> None:
         raise OSError(28, "the disk took only part of an entry")
 
 
-def _entries(path: Path) -> Iterator[tuple[PointRecord, bytes]]:
-    with path.open("rb") as file:
+def _entries(path: Path) -> Iterator[tuple[bytes, bytes]]:
+    """Encoded record and counts of every entry, up to the first that is not whole."""
+    try:
+        file = path.open("rb")
+    except FileNotFoundError:  # a recorder that is at work has moved it into the store
+        return
+    with file:
         while len(head := file.read(HEAD.size)) == HEAD.size:
             magic, record_length, counts_length, check = HEAD.unpack(head)
             if magic != MAGIC:
@@ -109,23 +134,27 @@ def _entries(path: Path) -> Iterator[tuple[PointRecord, bytes]]:
             body = file.read(record_length + counts_length)
             if len(body) < record_length + counts_length or zlib.crc32(body) != check:
                 return
-            yield decode(body[:record_length]), body[record_length:]
+            yield body[:record_length], body[record_length:]
 
 
 def read_journal(
     store: Path, dtype: np.dtype[Any], first: int = 0
 ) -> tuple[list[PointRecord], dict[int, NDArray[Any]]]:
-    """What a journal holds from point `first` on: records without gaps, and counts that are not in the store yet."""
+    """What a journal holds from point `first` on: records without gaps, and counts that are not in the store yet.
+
+    Segments come before the log: a chunk that becomes durable meanwhile is then in both, and not in neither.
+    """
     folder = journal_folder(store)
     records: dict[int, PointRecord] = {}
     counts: dict[int, NDArray[Any]] = {}
-    log = folder / "points.log"
-    if log.exists():
-        records |= {record.index: record for record, _ in _entries(log)}
     for segment in sorted(folder.glob("segment-*.bin")):
-        for record, data in _entries(segment):
+        for encoded, data in _entries(segment):
+            record = decode(encoded)
             records[record.index] = record
             counts[record.index] = np.frombuffer(data, dtype)
+    for encoded, _ in _entries(folder / LOG):
+        record = decode(encoded)
+        records.setdefault(record.index, record)
     whole: list[PointRecord] = []
     while first + len(whole) in records:
         whole.append(records[first + len(whole)])

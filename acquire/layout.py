@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 import os
 import warnings
 from collections.abc import Callable, Sequence
@@ -18,7 +19,8 @@ from acquire.journal import sync_folder
 from acquire.record import PointRecord
 from checks.observation import Circumstances, Observation
 
-CHUNK = 64  # points in a chunk of counts
+MOST_POINTS = 64  # in a chunk of counts
+CHUNK_BYTES = 8 << 20  # long records make a chunk of fewer points
 WIDE_CHUNK = 4096  # points in a chunk of everything else
 AXIS_NAMES = ("x", "y", "z", "theta", "phi")
 
@@ -95,12 +97,13 @@ def create(
 ) -> None:
     """Make an empty store of `shape` (points, samples), all arrays at their final size."""
     points, samples = shape
+    in_chunk = max(1, min(MOST_POINTS, CHUNK_BYTES // (samples * np.dtype(dtype).itemsize), points))
     group = zarr.create_group(path, attributes=attributes)
     lengths = {"axis": 5, "frequency": circumstances.frequencies_hz.size, "side_line": 2}
     group.create_array(
         "counts",
         shape=shape,
-        chunks=(min(CHUNK, points), samples),
+        chunks=(in_chunk, samples),
         dtype=dtype,
         compressors=[BloscCodec(cname="lz4", clevel=1, shuffle="bitshuffle"), Crc32cCodec()],
         dimension_names=("point", "sample"),
@@ -124,6 +127,7 @@ def create(
     _coordinate(group, "side_line", c.side_lines_hz, "Hz", "lines beside the drive frequency")
     _coordinate(group, "point", np.arange(points), "1", "order of capture")
     consolidate(path)
+    _sync_tree(path)
 
 
 def _coordinate(group: zarr.Group, name: str, values: NDArray[Any], units: str, long_name: str) -> None:
@@ -138,18 +142,43 @@ def _coordinate(group: zarr.Group, name: str, values: NDArray[Any], units: str, 
 
 
 def consolidate(path: Path) -> None:
-    """Gather the metadata, so that readers need not list the folder; again after every change of attributes."""
+    """Gather the metadata of the arrays, so that readers need not list the folder; their shapes never change."""
     with warnings.catch_warnings():
         warnings.simplefilter("ignore")  # zarr: consolidated metadata is not yet part of the format 3 standard
         zarr.consolidate_metadata(path, zarr_format=3)
 
 
+def put_attributes(path: Path, changes: dict[str, Any], dropped: Sequence[str] = ()) -> None:
+    """Change attributes of the group: all of them or none, durable, whatever happens meanwhile."""
+    file = path / "zarr.json"
+    document = json.loads(file.read_text("utf-8"))
+    kept = {key: value for key, value in document["attributes"].items() if key not in dropped}
+    document["attributes"] = kept | changes
+    written = file.with_name("zarr.json.partial")
+    with written.open("w", encoding="utf-8") as new:
+        json.dump(document, new)
+        new.flush()
+        os.fsync(new.fileno())
+    written.replace(file)
+    sync_folder(path)
+
+
+def points_in_chunk(path: Path) -> int:
+    """How many points a chunk of counts holds."""
+    return zarr.open_array(path / "counts", mode="r").chunks[0]
+
+
+def chunk_file(path: Path, number: int) -> Path:
+    """Where a chunk of counts is kept."""
+    return path / "counts" / "c" / str(number) / "0"
+
+
 def write_counts(path: Path, number: int, counts: NDArray[Any]) -> None:
-    """Write one chunk of counts, once, and make it durable; `counts` has shape (up to CHUNK, samples)."""
+    """Write one chunk of counts, once, and make it durable; `counts` has shape (up to a chunk's points, samples)."""
     array = zarr.open_array(path / "counts", mode="r+")
-    first = number * CHUNK
+    first = number * array.chunks[0]
     array[first : first + counts.shape[0]] = counts
-    _sync_chunk(path / "counts" / "c" / str(number) / "0")
+    _sync_chunk(path, chunk_file(path, number))
 
 
 def write_columns(path: Path, first: int, records: Sequence[PointRecord], seen: Sequence[Observation]) -> None:
@@ -161,11 +190,27 @@ def write_columns(path: Path, first: int, records: Sequence[PointRecord], seen: 
         if isinstance(array, zarr.Array):
             array[first : first + len(rows)] = np.array(rows, column.dtype)
         inner = "/0" * len(column.dimensions)
-        _sync_chunk(path / column.name / f"c/{first // WIDE_CHUNK}{inner}")
+        _sync_chunk(path, path / column.name / f"c/{first // WIDE_CHUNK}{inner}")
 
 
-def _sync_chunk(file: Path) -> None:
+def _sync_chunk(path: Path, file: Path) -> None:
+    """Make a chunk durable, and the names of the folders that were made for it."""
     if file.exists():  # a chunk that is all fill value is not written
-        with file.open("rb") as chunk:
-            os.fsync(chunk.fileno())
-        sync_folder(file.parent)
+        _sync_file(file)
+        for folder in file.parents:
+            if folder == path:
+                return
+            sync_folder(folder)
+
+
+def _sync_tree(path: Path) -> None:
+    for folder, _, files in os.walk(path):
+        for name in files:
+            _sync_file(Path(folder, name))
+        sync_folder(Path(folder))
+    sync_folder(path.parent)
+
+
+def _sync_file(file: Path) -> None:
+    with file.open("rb") as opened:
+        os.fsync(opened.fileno())

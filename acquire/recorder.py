@@ -9,7 +9,6 @@ import os
 import pickle
 import subprocess
 import sys
-from multiprocessing import Pipe
 from pathlib import Path
 from time import monotonic
 from types import TracebackType
@@ -20,7 +19,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from acquire import wire
-from acquire.channel import Channel
+from acquire.channel import Channel, channel_pair
 from acquire.header import StoreHeader
 from acquire.messages import Event
 from acquire.record import PointRecord
@@ -28,7 +27,8 @@ from acquire.ring import Ring, new_descriptor
 from checks.observation import Circumstances
 
 RING_BYTES = 64 << 20
-FEWEST_SLOTS, MOST_SLOTS = 4, 512
+FEWEST_SLOTS, MOST_SLOTS = 4, 256  # records of so many points fit into the pipe, so sending one never waits
+TIMING = 0.01  # of a sample interval: by so little may the times of a record differ
 START_S, FINISH_S, STALL_S = 60.0, 600.0, 60.0
 ONE_THREAD = ("OPENBLAS_NUM_THREADS", "OMP_NUM_THREADS", "MKL_NUM_THREADS", "BLIS_NUM_THREADS")
 
@@ -67,11 +67,10 @@ class Recorder:
         self._events: list[Event | msgspec.Raw] = []
         self._pipe: Channel
         self._process: subprocess.Popen[bytes]
-        self.already_stored = 0
+        self.already_stored = self._expected = 0
 
     def __enter__(self) -> Self:
-        ours, theirs = Pipe()
-        self._pipe = Channel(ours)
+        self._pipe, theirs = channel_pair()
         descriptors = (theirs.fileno(), self._ring.descriptor)
         command = [sys.executable, "-m", "acquire.recorder_process", *map(str, descriptors)]
         environment = os.environ | dict.fromkeys(ONE_THREAD, "1")
@@ -82,7 +81,7 @@ class Recorder:
         theirs.close()
         try:
             self._pipe.send(pickle.dumps(self._setup))
-            self.already_stored = int(self._wait_for(wire.READY, START_S))
+            self.already_stored = self._expected = int(self._wait_for(wire.READY, START_S))
         except BaseException:
             self.close()
             raise
@@ -95,8 +94,9 @@ class Recorder:
         """Hand a point over; waits only when the recorder is a whole ring behind.
 
         Raises:
-            RecorderFailed: it has failed, or does not go on.
+            RecorderFailed: it has failed or does not go on, or the point does not belong to this scan.
         """
+        self._check(record, counts)
         deadline = monotonic() + STALL_S
         while not self._free:
             if monotonic() > deadline:
@@ -105,7 +105,23 @@ class Recorder:
         self._ring.rows[self._next] = counts
         self._next = (self._next + 1) % self._ring.slots
         self._free -= 1
+        self._expected += 1
         self._send(wire.POINT + wire.encode_record(record))
+
+    def _check(self, record: PointRecord, counts: NDArray[Any]) -> None:
+        """All points of a scan have one record length, interval and start, and come in the planned order."""
+        s, c = self._setup, self._setup.circumstances
+        if record.index != self._expected or record.index >= s.planned:
+            raise RecorderFailed(f"point {record.index} of {s.planned} came where {self._expected} was due")
+        if counts.shape != (s.samples,) or not np.can_cast(counts.dtype, s.dtype, "equiv"):
+            got, want = f"{counts.size} samples of {counts.dtype}", f"{s.samples} of {s.dtype}"
+            raise RecorderFailed(f"point {record.index} has {got} instead of {want}: leave the oscilloscope alone")
+        late_s = record.start_s - c.record_start_s + (s.samples - 1) * (record.interval_s - c.sample_interval_s)
+        if max(abs(late_s), abs(record.start_s - c.record_start_s)) > TIMING * c.sample_interval_s:
+            raise RecorderFailed(
+                f"point {record.index} begins at {record.start_s:.9g} s, {record.interval_s:.9g} s between samples; "
+                f"the scan at {c.record_start_s:.9g} s, {c.sample_interval_s:.9g} s: leave the oscilloscope alone"
+            )
 
     def poll(self) -> list[Event | msgspec.Raw]:
         """Events since the last call; does not wait.
@@ -123,6 +139,8 @@ class Recorder:
         Raises:
             RecorderFailed: it could not be completed; the journal keeps what was announced.
         """
+        if sealed and self._expected < self._setup.planned:
+            raise RecorderFailed(f"only {self._expected} of {self._setup.planned} points are there: not sealed")
         self._send(wire.FINISH + (b"1" if sealed else b"0"))
         self._wait_for(wire.FINISHED, timeout_s)
         events, self._events = self._events, []

@@ -33,7 +33,7 @@ class Ring:
 def new_descriptor(size: int) -> int:
     """An unnamed file of that size, in memory where the system can."""
     if hasattr(os, "memfd_create"):
-        descriptor = os.memfd_create("truepivot-ring", 0)
+        descriptor = os.memfd_create("truepivot-ring")
     else:
         with tempfile.TemporaryFile() as file:
             descriptor = os.dup(file.fileno())

@@ -16,7 +16,7 @@ from acquire.header import circumstances_from_mapping, read_attributes
 from acquire.judge import Judge, changes_as_mappings, meta_of, standing
 from acquire.prepare import Job
 from acquire.record import PointRecord
-from acquire.recovery import Counts, Recovered, records_in, recover
+from acquire.recovery import Counts, Recovered, gather, records_in
 from checks.observation import Circumstances, Observation
 from profiles.bench import Bench
 from profiles.scan import Scan
@@ -56,14 +56,17 @@ class StoredScan:
         """Whether every point is there."""
         return bool(self.attributes["sealed"])
 
+    @property
+    def _finished(self) -> bool:
+        """Whether the recorder came to its end, sealing or broken off: all is then in the store."""
+        return "points" in self.attributes
+
     @cached_property
     def _points(self) -> Recovered:
         group = zarr.open_group(self.path, mode="r", use_consolidated=False)
-        if "points" in self.attributes:  # finished, sealed or broken off: all is in the store
+        if self._finished:
             return Recovered(records_in(group), Counts(self.path, {}))
-        array = group["counts"]
-        shape = array.shape if isinstance(array, zarr.Array) else (0, 0)
-        return recover(self.path, shape[0], shape[1])
+        return gather(self.path)
 
     @property
     def records(self) -> list[PointRecord]:
@@ -81,10 +84,14 @@ class StoredScan:
 
     def observations(self) -> list[Observation]:
         """The observations, from the numbers stored beside the counts; computed again where they are not stored."""
-        if "points" not in self.attributes:
-            return self.judged()[0]
+        if not self._finished:
+            return self._judged[0]
         group = zarr.open_group(self.path, mode="r", use_consolidated=False)
         return observations_in(group, self.records)
+
+    @cached_property
+    def _judged(self) -> tuple[list[Observation], list[dict[str, Any]]]:
+        return self.judged()
 
     def judged(self) -> tuple[list[Observation], list[dict[str, Any]]]:
         """Observations and what the checks say, computed once more from the counts."""
@@ -100,7 +107,9 @@ class StoredScan:
 
     @property
     def changes(self) -> list[dict[str, Any]]:
-        """What the checks said while the scan ran."""
+        """What the checks said while the scan ran; of a scan that was killed, what they say of its points."""
+        if not self._finished:
+            return self._judged[1]
         found: list[dict[str, Any]] = self.attributes["finding_changes"]
         return found
 

@@ -41,6 +41,7 @@ FAILURES = {
     "DriverError",
     "ScanFailed",
     "ReplayDiffers",
+    "StoreDamaged",
 }
 
 

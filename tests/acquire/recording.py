@@ -2,7 +2,7 @@
 
 `python -m tests.acquire.recording STORE PLANNED [continue]`
 
-Prints how many points have been announced as stored, a line each time.
+Prints how many points are stored when it begins, and whenever more have been announced as stored.
 """
 
 from __future__ import annotations
@@ -23,15 +23,21 @@ def main() -> None:
     continued = len(sys.argv) > 3
     decode = msgspec.msgpack.Decoder().decode
     with Recorder(store, header(), circumstances(planned), "int16", SAMPLES, planned, continued) as recorder:
+        say(recorder.already_stored)
         for i in range(recorder.already_stored, planned):
             recorder.put(record_of(i, planned), counts_of(i, planned))
             for event in recorder.poll():
                 body = decode(event) if isinstance(event, msgspec.Raw) else {}
                 if body.get("type") == "stored":
-                    sys.stdout.write(f"{body['last'] + 1}\n")
-                    sys.stdout.flush()
+                    say(body["last"] + 1)
             time.sleep(0.002)
         recorder.finish(sealed=True)
+
+
+def say(points: int) -> None:
+    """A line for the test."""
+    sys.stdout.write(f"{points}\n")
+    sys.stdout.flush()
 
 
 if __name__ == "__main__":
