@@ -164,14 +164,16 @@ def in_a_real_beam(fit: RadiusFit, c: Circumstances) -> RadiusFit:
     """The fit with what a real beam does to the radius: it is no plane wave over the element.
 
     Across the face the amplitude falls as exp(-r²/w²), which makes the element look smaller by up to a²/(12 w²) (from
-    the second moment of the weighted face, derived); half of it is put right, all of it is uncertainty (rectangular).
-    And the source is seen under an angle of a_s/L, whose square over two bounds what the spread of directions does.
+    the second moment of the weighted face, derived). And a plane source is seen under an angle of a_s/L: waves from
+    all of it widen the pattern, by up to (a_s/L)²/2 of its width (second moment of the directions, derived). Half of
+    either is put right, all of it is uncertainty (rectangular).
     """
     taper = fit.radius_m**2 / (12 * beam_w(fit.frequencies_hz, c) ** 2)
     seen = (c.source_radius_m / c.distance_m) ** 2 / 2 if c.focal_length_m is None else 0.0
-    radius = fit.radius_m * (1 + taper / 2)
-    model = radius * np.sqrt(taper**2 / 12 + seen**2 / 3)
-    return replace(fit, radius_m=radius, radius_u_m=np.hypot(fit.radius_u_m, model), model_u_m=model)
+    radius = fit.radius_m * (1 + taper / 2 + seen / 2)
+    model = radius * np.sqrt((taper**2 + seen**2) / 12)
+    common = np.hypot(model, fit.model_u_m) if fit.model_u_m.size else model
+    return replace(fit, radius_m=radius, radius_u_m=np.hypot(fit.radius_u_m, model), model_u_m=common)
 
 
 @dataclass(frozen=True)

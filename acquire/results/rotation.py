@@ -91,15 +91,14 @@ def _plane_result(
 
 
 def wider(fit: RadiusFit, uncorrected: RadiusFit) -> RadiusFit:
-    """The fit with what the pivot offset was taken to do to it as one more uncertainty (rectangular)."""
+    """The fit with what the pivot offset was taken to do to it as one more uncertainty.
 
-    def grown(u: NDArray[np.float64], change: NDArray[np.float64]) -> NDArray[np.float64]:
-        return np.asarray(np.hypot(u, np.abs(change) / np.sqrt(3)))
-
-    # half of what was put right stays open (rectangular over the whole of it, centred)
-    radius_u = grown(fit.radius_u_m, (fit.radius_m - uncorrected.radius_m) / 2)
-    zero_u = grown(np.array(fit.angle_zero_u), np.array(fit.angle_zero - uncorrected.angle_zero) / 2)
-    return replace(fit, radius_u_m=radius_u, angle_zero_u=float(zero_u))
+    What was put right lies in the middle of what it may be, so as much to either side stays open (rectangular).
+    """
+    change = np.abs(fit.radius_m - uncorrected.radius_m) / np.sqrt(3)
+    zero_u = np.hypot(fit.angle_zero_u, abs(fit.angle_zero - uncorrected.angle_zero) / np.sqrt(3))
+    radius_u = np.hypot(fit.radius_u_m, change)
+    return replace(fit, radius_u_m=radius_u, angle_zero_u=float(zero_u), model_u_m=change)
 
 
 def quantities(results: Sequence[PlaneResult], circumstances: Circumstances) -> list[Quantity]:
