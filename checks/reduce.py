@@ -14,6 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from checks.observation import Circumstances, Observation, Pose
+from checks.quiet import Quiet
 
 ROWS = 8
 Counts = NDArray[np.int8] | NDArray[np.int16]
@@ -43,42 +44,49 @@ class Reducer:
     def __init__(self, circumstances: Circumstances) -> None:
         c = circumstances
         self._gate = slice(c.gate.start, c.gate.stop)
-        self._quiet = slice(c.gate.quiet_start, c.gate.quiet_stop)
+        self._before = slice(c.gate.quiet_start, c.gate.quiet_stop)
         self._interval_s = c.sample_interval_s
         self._lines = c.frequencies_hz.size
         length = c.gate.stop - c.gate.start
         frequencies = np.concatenate([c.frequencies_hz, c.side_lines_hz])
         times = c.record_start_s + np.arange(c.gate.start, c.gate.stop) * c.sample_interval_s
         angle = 2 * np.pi * np.outer(times, frequencies)
-        self._matrix = (np.hstack([np.cos(angle), -np.sin(angle)]) * (2 / length)).astype(np.float32)
+        # real and imaginary parts side by side, so that the product is read as complex numbers
+        self._matrix = (np.exp(-1j * angle) * (2 / length)).view(np.float64).astype(np.float32)
         self._leak = self._matrix.sum(axis=0, dtype=np.float64)
-        self._noise_gain = float(np.sqrt(2 / length))
         self._block = np.zeros((ROWS, length), np.float32)
+        samples = c.gate.quiet_stop - c.gate.quiet_start
+        self._quiet = Quiet(samples, length, c.sample_interval_s, c.frequencies_hz)
+        self._quiet_block = np.zeros((ROWS, samples), np.float32)
 
     def reduce(self, counts: Sequence[Counts], metas: Sequence[PointMeta]) -> list[Observation]:
         """Observations of points of one aligned block of eight; `counts` are rows of shape (samples,)."""
         rows = [meta.index % ROWS for meta in metas]
         if len(rows) < ROWS:
-            self._block[:] = 0.0
+            self._block[:] = self._quiet_block[:] = 0.0
         whole = np.array(counts)
         inside = whole[:, self._gate]
         self._block[rows] = inside
-        product = (self._block @ self._matrix)[rows].astype(np.float64)
-        quiet = whole[:, self._quiet].astype(np.float32)
-        level = quiet.mean(axis=1, dtype=np.float64)
-        quiet -= level[:, None].astype(np.float32)
-        noise = np.sqrt(np.einsum("ij,ij->i", quiet, quiet).astype(np.float64) / quiet.shape[1])
-        gated = self._block[rows]
-        gated -= level[:, None].astype(np.float32)
+        self._quiet_block[rows] = whole[:, self._before]
+        parts = (self._block @ self._matrix).astype(np.float64)
+        noise = self._quiet.look(self._quiet_block)
+        parts -= noise.level[:, None] * self._leak
+        self._block -= noise.level[:, None].astype(np.float32)
+        square = np.einsum("ij,ij->i", self._block, self._block).astype(np.float64)
+        gain = np.array([meta.volts_per_count for meta in metas])
+        zero = np.array([meta.volts_at_zero for meta in metas])
+        level = noise.level[rows]
+        ends = np.array([inside.max(axis=1) - level, inside.min(axis=1) - level]) * gain
         numbers = _Rows(
-            parts=product - level[:, None] * self._leak,
-            level=level,
-            noise=noise,
-            top=inside.max(axis=1) - level,
-            bottom=inside.min(axis=1) - level,
-            square=np.einsum("ij,ij->i", gated, gated).astype(np.float64),
-            high=whole.max(axis=1),
-            low=whole.min(axis=1),
+            components=parts.view(np.complex128)[rows] * gain[:, None],
+            sigma=noise.sigma[rows] * np.abs(gain)[:, None],
+            rms=(noise.rms[rows] * np.abs(gain)).tolist(),
+            offset=(level * gain + zero).tolist(),
+            peak=ends.max(axis=0).tolist(),
+            trough=ends.min(axis=0).tolist(),
+            square=(square[rows] * gain**2 * self._interval_s).tolist(),
+            high=whole.max(axis=1).tolist(),
+            low=whole.min(axis=1).tolist(),
         )
         return [
             self._observe(numbers, i, samples, meta)
@@ -86,14 +94,7 @@ class Reducer:
         ]
 
     def _observe(self, numbers: _Rows, i: int, samples: Counts, meta: PointMeta) -> Observation:
-        gain = meta.volts_per_count
-        noise = float(numbers.noise[i]) * abs(gain)
-        level = float(numbers.level[i])
-        parts = numbers.parts[i] * gain
-        half = parts.size // 2
-        components = parts[:half] + 1j * parts[half:]
-        low, high = int(numbers.low[i]), int(numbers.high[i])
-        ends = (float(numbers.top[i]) * gain, float(numbers.bottom[i]) * gain)
+        low, high = numbers.low[i], numbers.high[i]
         middle, half_range = (meta.highest + meta.lowest) / 2, (meta.highest - meta.lowest) / 2
         return Observation(
             index=meta.index,
@@ -104,14 +105,14 @@ class Reducer:
             reported_after=meta.reported_after,
             time_s=meta.time_s,
             temperature_c=meta.temperature_c,
-            components=components[: self._lines],
-            side_components=components[self._lines :],
-            component_noise_v=np.full(self._lines, noise * self._noise_gain),
-            peak_v=max(ends),
-            trough_v=min(ends),
-            square_integral_v2s=float(numbers.square[i]) * gain**2 * self._interval_s,
-            noise_rms_v=noise,
-            offset_v=level * gain + meta.volts_at_zero,
+            components=numbers.components[i, : self._lines],
+            side_components=numbers.components[i, self._lines :],
+            component_noise_v=numbers.sigma[i],
+            peak_v=numbers.peak[i],
+            trough_v=numbers.trough[i],
+            square_integral_v2s=numbers.square[i],
+            noise_rms_v=numbers.rms[i],
+            offset_v=numbers.offset[i],
             clipped_high=int(np.count_nonzero(samples >= meta.highest)) if high >= meta.highest else 0,
             clipped_low=int(np.count_nonzero(samples <= meta.lowest)) if low <= meta.lowest else 0,
             range_use=min(1.0, max(high - middle, middle - low) / half_range),
@@ -120,13 +121,14 @@ class Reducer:
 
 @dataclass(frozen=True)
 class _Rows:
-    """What was computed for all rows at once, each row from its own samples alone; in counts."""
+    """What was computed for all rows at once, each row from its own samples alone; in volts, the extremes in counts."""
 
-    parts: NDArray[np.float64]
-    level: NDArray[np.float64]
-    noise: NDArray[np.float64]
-    top: NDArray[np.float64]
-    bottom: NDArray[np.float64]
-    square: NDArray[np.float64]
-    high: NDArray[np.int8] | NDArray[np.int16]
-    low: NDArray[np.int8] | NDArray[np.int16]
+    components: NDArray[np.complex128]
+    sigma: NDArray[np.float64]
+    rms: list[float]
+    offset: list[float]
+    peak: list[float]
+    trough: list[float]
+    square: list[float]
+    high: list[int]
+    low: list[int]
