@@ -220,8 +220,8 @@ def seen_from_the_source(plane: PlaneResponse, x_m: float, z_m: float, c: Circum
 
     The turn carries the element sideways by X = ex (cos - 1) + ez sin. So the wave meets it under an angle smaller by
     up to X/L (half of that is taken), and it stands off the middle of the beam, whose level falls by exp(-X²/w²). It
-    also goes along the beam by Z = ez (cos - 1) - ex sin, and the wave spreads as L/(L + Z). The width is that of a piston's
-    far field, 2 x 2.21 L/(k a), and harmonic n is narrower by n^-3/4, between the quasi-linear n^-1/2 and the
+    also goes along the beam by Z = ez (cos - 1) - ex sin, and the wave spreads as L/(L + Z). The width is that
+    of a piston's far field, 2 x 2.21 L/(k a), and harmonic n is narrower by n^-3/4, between the quasi-linear n^-1/2 and the
     linear n^-1 (derived; `checks.pivot` has the convention). How well the width is known goes into `sigma`, so that
     points far down the side of the beam lose their weight.
     """
