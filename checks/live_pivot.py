@@ -80,7 +80,7 @@ class PivotCheck:
         theta, time = seen.commanded.theta, self._at_first_temperature(arrival, seen)
         arrived = Arrived(theta, time, arrival.standard_uncertainty_s, seen.index)
         before = self._fit.points
-        self._fit, stepped = self._steps.take(self._fit, self._estimate, arrived)
+        stepped = self._steps.take(self._fit, arrived)
         self._largest = max(self._largest, abs(theta))
         if stepped or (self._fit.points > before and due(self._fit.points)):
             self._estimate = self._fit.estimate()

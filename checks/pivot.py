@@ -12,10 +12,13 @@ column: 0 before, 1 after.
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import NDArray
+
+from checks.changepoint import Tail
+from checks.recursion import Recursion
 
 Vector = NDArray[np.float64]
 TIMING_FLOOR_S = 2e-11  # trigger jitter and sampling clock leave at least this much
@@ -68,40 +71,9 @@ class PivotEstimate:
         return np.asarray((self.z_m * (np.cos(theta) - 1) - self.x_m * np.sin(theta)) / speed_m_s)
 
 
-@dataclass
-class _Sums:
-    """Sums of least squares over some points."""
-
-    normal: Vector = field(default_factory=lambda: np.zeros((COLUMNS, COLUMNS)))
-    moment: Vector = field(default_factory=lambda: np.zeros(COLUMNS))
-    square: float = 0.0
-    weight: float = 0.0
-    points: int = 0
-
-    def add(self, row: Vector, value: float, weight: float) -> None:
-        self.normal += weight * np.outer(row, row)
-        self.moment += weight * value * row
-        self.square += weight * value**2
-        self.weight += weight
-        self.points += 1
-
-    def copy(self) -> _Sums:
-        return replace(self, normal=self.normal.copy(), moment=self.moment.copy())
-
-    def without(self, other: _Sums) -> _Sums:
-        """The points that are not in `other`."""
-        return _Sums(
-            self.normal - other.normal,
-            self.moment - other.moment,
-            self.square - other.square,
-            self.weight - other.weight,
-            self.points - other.points,
-        )
-
-    def shift(self, points: _Sums, step_s: float) -> None:
-        """As if the values of some of the points had been smaller by so much; the first column is 1."""
-        self.square += step_s * (step_s * points.normal[0, 0] - 2 * points.moment[0])
-        self.moment -= step_s * points.normal[:, 0]
+def variance_of(sigma_s: float) -> float:
+    """Variance of an arrival with that standard uncertainty, s²."""
+    return sigma_s**2 + TIMING_FLOOR_S**2
 
 
 @dataclass
@@ -115,15 +87,14 @@ class PivotFit:
     speed_m_s: float
     distance_m: float
     order_scale: int
-    sums: _Sums = field(default_factory=_Sums)
-    after: _Sums | None = None
+    normal: Vector = field(default_factory=lambda: np.zeros((COLUMNS, COLUMNS)))
+    moment: Vector = field(default_factory=lambda: np.zeros(COLUMNS))
+    square: float = 0.0
+    weight: float = 0.0
+    points: int = 0
+    after: Tail | None = None
     origin_s: float = 0.0
     taken_s: float = 0.0
-
-    @property
-    def points(self) -> int:
-        """How many arrivals there are."""
-        return self.sums.points
 
     def row(self, theta: float, order: int) -> Vector:
         """Row of the model: constant, ex, ez, drift."""
@@ -134,40 +105,51 @@ class PivotFit:
         """Take one arrival with its standard uncertainty."""
         if not self.points:
             self.origin_s = arrival_s
-        weight = 1.0 / (sigma_s**2 + TIMING_FLOOR_S**2)
+        weight = 1.0 / variance_of(sigma_s)
         row = self.row(theta, order)
-        value = arrival_s - self.origin_s - self.taken_s
-        self.sums.add(row, value, weight)
+        value = self.value(arrival_s)
+        self.normal += weight * np.outer(row, row)
+        self.moment += weight * value * row
+        self.square += weight * value**2
+        self.weight += weight
+        self.points += 1
         if self.after is not None:
             self.after.add(row, value, weight)
 
-    def copy(self) -> PivotFit:
-        """The fit as it stands, to come back to."""
-        return replace(self, sums=self.sums.copy(), after=None if self.after is None else self.after.copy())
+    def step(self, after: Tail) -> None:
+        """Put a step into the model, over the arrivals in `after`; these may be none yet.
 
-    def stepped_after(self, before: PivotFit) -> PivotFit:
-        """A fit of the same points with a step after those of `before`, an earlier copy of this one.
-
-        A step that is in the model already is taken off as it is estimated before the new one.
+        A step that is in the model already is taken off as it is estimated now; `after` lies within its arrivals.
         """
-        fit, earlier = self.copy(), before.copy()
-        if before.after is not None and fit.after is not None:
-            estimate = before.estimate() or self.estimate()
-            step = estimate.step_s if estimate is not None and estimate.step_s is not None else 0.0
-            earlier.sums.shift(before.after, step)
-            fit.sums.shift(fit.after, step)
-            fit.taken_s += step
-        fit.after = fit.sums.without(earlier.sums)
-        return fit
+        estimate, earlier = self.estimate(), self.after
+        step = None if estimate is None else estimate.step_s
+        if earlier is not None and step is not None:
+            self.square += step * (step * float(earlier.column[0]) - 2 * earlier.moment)
+            self.moment -= step * earlier.column
+            self.taken_s += step
+            after.moment -= step * float(after.column[0])
+        self.after = after
 
-    def estimate(self, drift: bool = True) -> PivotEstimate | None:
-        """The fit so far, or None while the angles do not determine it."""
-        kept = COLUMNS if drift else COLUMNS - 1
+    def recursion(self) -> Recursion | None:
+        """The linear fit so far, to be continued one arrival at a time; None while nothing is determined."""
+        return self._solved(COLUMNS)
+
+    def value(self, arrival_s: float) -> float:
+        """An arrival as the linear fit takes it."""
+        return arrival_s - self.origin_s - self.taken_s
+
+    def extended(self, theta: float, order: int) -> Vector:
+        """Row of the model after the step, where there is one."""
+        row = self.row(theta, order)
+        return row if self.after is None else np.append(row, 1.0)
+
+    def _solved(self, kept: int) -> Recursion | None:
         if self.points < kept + 2:
             return None
         normal, moment = self._equations(kept)
+        freedom = self.points - moment.size
         scale = np.sqrt(np.diag(normal))
-        if (scale <= 0).any():
+        if freedom < 1 or (scale <= 0).any():
             return None
         values, vectors = np.linalg.eigh(normal / np.outer(scale, scale))
         if values[0] < values[-1] / WORST_CONDITION:
@@ -175,11 +157,15 @@ class PivotFit:
         vectors = vectors / scale[:, None]
         inverse = (vectors / values) @ vectors.T
         solution = inverse @ moment
-        chi2 = max(0.0, self.sums.square - float(solution @ moment))
-        freedom = self.points - solution.size
-        if freedom < 1:
+        return Recursion(solution, inverse, max(0.0, self.square - float(solution @ moment)), freedom)
+
+    def estimate(self, drift: bool = True) -> PivotEstimate | None:
+        """The fit so far, or None while the angles do not determine it."""
+        solved = self._solved(COLUMNS if drift else COLUMNS - 1)
+        if solved is None:
             return None
-        covariance = inverse * max(1.0, chi2 / freedom)
+        solution, chi2, freedom = solved.coefficients, solved.square, solved.freedom
+        covariance = solved.inverse * max(1.0, chi2 / freedom)
         _, x, z = solution[:3]
         # the curvature of the wave adds X^2/(2 L c), X = ex cos + ez sin; with sin^2 = 2 (1 - cos) and
         # sin cos = sin to leading order it takes the columns of ex and ez. The wave is bent as from the middle of
@@ -191,7 +177,7 @@ class PivotFit:
             x_m=float(x),
             z_m=float(z),
             covariance=covariance[1:3, 1:3] + np.diag(model),
-            residual_sd_s=float(np.sqrt(chi2 / self.sums.weight * self.points / freedom)),
+            residual_sd_s=float(np.sqrt(chi2 / self.weight * self.points / freedom)),
             arrival_s=float(solution[0]) + self.origin_s,
             drift_s=float(solution[3]) if drift else 0.0,
             points=self.points,
@@ -203,11 +189,11 @@ class PivotFit:
 
     def _equations(self, kept: int) -> tuple[Vector, Vector]:
         """Normal matrix and moments, the step as a last column where there is one: its row is the constant's."""
-        normal, moment = self.sums.normal[:kept, :kept], self.sums.moment[:kept]
+        normal, moment = self.normal[:kept, :kept], self.moment[:kept]
         if self.after is None:
             return normal, moment
-        column = self.after.normal[:kept, :1]
-        return np.block([[normal, column], [column.T, column[:1]]]), np.append(moment, self.after.moment[0])
+        column = self.after.column[:kept, None]
+        return np.block([[normal, column], [column.T, column[:1]]]), np.append(moment, self.after.moment)
 
 
 def fit_pivot(
