@@ -14,13 +14,13 @@ from checks.averaging import W6_TO_W
 from checks.element import X_6DB
 from checks.errors import MeasurementError
 from checks.observation import Circumstances, Observation
+from checks.wavefront import curvature
 
 Vector = NDArray[np.float64]
 USABLE_DB = 20.0  # signal over noise at angle zero that a line needs
 REPEATABILITY_FLOOR = 2e-4
 FEWEST_ANGLES = 5
 BEAM_EXPONENT = -0.75
-BENT = 0.5  # a wave arrives bent like something between a plane (0) and a sphere about the source (1)
 PISTON_SPEED = 1485.0  # m/s; a beam width need not be known better
 BEAM_KNOWN = 0.3  # relative uncertainty of a correction by exp(x) is so much of x: the width within 15 %
 FARTHEST = 4.0  # (X/w)² beyond which nothing is known of the beam: no larger correction is made
@@ -218,12 +218,12 @@ def beam_w(frequencies_hz: Vector, c: Circumstances) -> Vector:
 def seen_from_the_source(plane: PlaneResponse, x_m: float, z_m: float, c: Circumstances) -> PlaneResponse:
     """The plane as it would be with the element centre on the axis of rotation, for a known pivot offset.
 
-    The turn carries the element sideways by X = ex (cos - 1) + ez sin. So the wave meets it under an angle smaller by
-    up to X/L (half of that is taken), and it stands off the middle of the beam, whose level falls by exp(-X²/w²). It
-    also goes along the beam by Z = ez (cos - 1) - ex sin, and the wave spreads as L/(L + Z). The width is that
-    of a piston's far field, 2 x 2.21 L/(k a), and harmonic n is narrower by n^-3/4, between the quasi-linear n^-1/2 and the
-    linear n^-1 (derived; `checks.pivot` has the convention). How well the width is known goes into `sigma`, so that
-    points far down the side of the beam lose their weight.
+    The turn carries the element sideways by X = ex (cos - 1) + ez sin. So the wave, bent with radius R
+    (`checks.wavefront`), meets it under an angle smaller by X/R, and it stands off the middle of the beam, whose
+    level falls by exp(-X²/w²). It also goes along the beam by Z = ez (cos - 1) - ex sin, and the wave spreads as
+    L/(L + Z). The width is that of a piston's far field, 2 x 2.21 L/(k a), and harmonic n is narrower by n^-3/4,
+    between the quasi-linear n^-1/2 and the linear n^-1 (derived; `checks.pivot` has the convention). How well the
+    width is known goes into `sigma`, so that points far down the side of the beam lose their weight.
     """
     aside = x_m * (np.cos(plane.theta) - 1) + z_m * np.sin(plane.theta)
     along = z_m * (np.cos(plane.theta) - 1) - x_m * np.sin(plane.theta)
@@ -232,7 +232,7 @@ def seen_from_the_source(plane: PlaneResponse, x_m: float, z_m: float, c: Circum
     fallen = np.exp(-off) * spread[:, None]
     amplitude = plane.amplitude / fallen
     sigma = np.hypot(plane.sigma / fallen, BEAM_KNOWN * off * np.abs(np.nan_to_num(amplitude)))
-    return replace(plane, theta=plane.theta - BENT * aside / c.distance_m, amplitude=amplitude, sigma=sigma)
+    return replace(plane, theta=plane.theta - aside * curvature(c), amplitude=amplitude, sigma=sigma)
 
 
 def decibels(ratio: float) -> float:
