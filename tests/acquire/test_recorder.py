@@ -4,6 +4,7 @@ import resource
 import signal
 import subprocess
 import sys
+import threading
 import time
 from pathlib import Path
 from typing import Any
@@ -16,6 +17,7 @@ import xarray as xr
 
 from acquire import recorder as recorder_module
 from acquire.journal import journal_folder
+from acquire.layout import points_in_chunk
 from acquire.recorder import Recorder, RecorderFailed
 from acquire.store import NotAStore, open_stored
 from tests.acquire.making import SAMPLES, circumstances, counts_of, header, record_of
@@ -89,6 +91,101 @@ def test_a_full_ring_makes_the_bench_wait_and_loses_nothing(tmp_path: Path, monk
     monkeypatch.setattr(recorder_module, "FEWEST_SLOTS", 2)
     recorded(tmp_path / "a.zarr", 90)
     assert len(open_stored(tmp_path / "a.zarr").records) == 90
+
+
+def test_a_recorder_that_stood_still_and_a_daemon_that_does_not_listen_do_not_block_each_other(tmp_path: Path) -> None:
+    """Hundreds of lines make events larger than the pipe. Would both sides wait, this test would not end."""
+    planned = 1200
+    wide = circumstances(planned, drive_hz=0.2e6, frequencies_hz=np.arange(1, 200) * 0.2e6)
+    counts = counts_of(0, planned)
+    with Recorder(tmp_path / "a.zarr", header(), wide, "int16", SAMPLES, planned) as recorder:
+        (process,) = recorders()
+        process.suspend()
+        going_on = threading.Timer(0.5, process.resume)
+        going_on.start()
+        for i in range(planned):
+            recorder.put(record_of(i, planned), counts)
+        recorder.finish(sealed=True)
+        going_on.join()
+    assert len(open_stored(tmp_path / "a.zarr").records) == planned
+
+
+def test_all_that_was_handed_over_is_kept_when_the_daemon_ends_without_a_word(tmp_path: Path) -> None:
+    with Recorder(tmp_path / "a.zarr", header(), circumstances(300), "int16", SAMPLES, 300) as recorder:
+        for i in range(200):
+            recorder.put(record_of(i, 300), counts_of(i, 300))
+    assert open_stored(tmp_path / "a.zarr").records == [record_of(i, 300) for i in range(200)]
+
+
+@pytest.mark.parametrize("number", [signal.SIGINT, signal.SIGTERM, signal.SIGHUP])
+def test_signals_that_are_for_the_daemon_do_not_end_the_recorder(tmp_path: Path, number: signal.Signals) -> None:
+    with Recorder(tmp_path / "a.zarr", header(), circumstances(70), "int16", SAMPLES, 70) as recorder:
+        for i in range(70):
+            if i == 30:
+                recorders()[0].send_signal(number)
+            recorder.put(record_of(i, 70), counts_of(i, 70))
+        recorder.finish(sealed=True)
+    assert open_stored(tmp_path / "a.zarr").sealed
+
+
+FOREIGN: dict[str, tuple[dict[str, Any], int, str, str]] = {
+    "a shorter record": ({}, SAMPLES - 1, "int16", "599 samples of int16 instead of 600 of int16"),
+    "one sample": ({}, 1, "int16", "1 samples"),
+    "a wider type": ({}, SAMPLES, "int32", "600 samples of int32 instead of 600 of int16"),
+    "another interval": ({"interval_s": 2e-8}, SAMPLES, "int16", "2e-08 s between samples"),
+    "another start": ({"start_s": 79e-6}, SAMPLES, "int16", "begins at 7.9e-05 s"),
+    "a point left out": ({"index": 2}, SAMPLES, "int16", "point 2 of 3 came where 1 was due"),
+    "a point twice": ({"index": 0}, SAMPLES, "int16", "point 0 of 3 came where 1 was due"),
+}
+
+
+@pytest.mark.parametrize(("changes", "samples", "dtype", "said"), FOREIGN.values(), ids=FOREIGN.keys())
+def test_a_point_that_does_not_belong_to_the_scan_is_refused_and_the_others_stay(
+    tmp_path: Path, changes: dict[str, Any], samples: int, dtype: str, said: str
+) -> None:
+    with Recorder(tmp_path / "a.zarr", header(), circumstances(3), "int16", SAMPLES, 3) as recorder:
+        recorder.put(record_of(0, 3), counts_of(0, 3))
+        with pytest.raises(RecorderFailed, match=said):
+            recorder.put(msgspec.structs.replace(record_of(1, 3), **changes), np.zeros(samples, dtype))
+    assert open_stored(tmp_path / "a.zarr").records == [record_of(0, 3)]
+
+
+def test_more_points_than_planned_are_refused(tmp_path: Path) -> None:
+    with Recorder(tmp_path / "a.zarr", header(), circumstances(1), "int16", SAMPLES, 1) as recorder:
+        recorder.put(record_of(0, 1), counts_of(0, 1))
+        with pytest.raises(RecorderFailed, match="point 1 of 1"):
+            recorder.put(record_of(1, 1), counts_of(1, 1))
+
+
+def test_a_scan_with_points_missing_is_not_sealed(tmp_path: Path) -> None:
+    with Recorder(tmp_path / "a.zarr", header(), circumstances(3), "int16", SAMPLES, 3) as recorder:
+        recorder.put(record_of(0, 3), counts_of(0, 3))
+        with pytest.raises(RecorderFailed, match="only 1 of 3 points"):
+            recorder.finish(sealed=True)
+    assert not open_stored(tmp_path / "a.zarr").sealed
+
+
+def test_a_lone_point_is_judged_and_announced_without_waiting_for_others(tmp_path: Path) -> None:
+    with Recorder(tmp_path / "a.zarr", header(), circumstances(9), "int16", SAMPLES, 9) as recorder:
+        recorder.put(record_of(0, 9), counts_of(0, 9))
+        kinds: set[str] = set()
+        until = time.monotonic() + 30
+        while kinds < {"point", "stored"} and time.monotonic() < until:
+            kinds |= {e["type"] for e in as_mappings(recorder.poll())}
+            time.sleep(0.005)
+    assert kinds >= {"point", "stored"}
+
+
+def test_long_records_make_chunks_of_fewer_points(tmp_path: Path) -> None:
+    samples, planned = 1_500_000, 7
+    long = circumstances(planned)
+    with Recorder(tmp_path / "a.zarr", header(), long, "int16", samples, planned) as recorder:
+        for i in range(planned):
+            recorder.put(record_of(i, planned), np.full(samples, i, np.int16))
+        recorder.finish(sealed=True)
+    stored = open_stored(tmp_path / "a.zarr")
+    assert points_in_chunk(tmp_path / "a.zarr") == 2
+    assert [int(stored.counts(i)[-1]) for i in range(planned)] == list(range(planned))
 
 
 def test_a_store_that_exists_is_not_written_over(tmp_path: Path) -> None:
