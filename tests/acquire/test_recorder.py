@@ -170,7 +170,7 @@ def test_a_lone_point_is_judged_and_announced_without_waiting_for_others(tmp_pat
         recorder.put(record_of(0, 9), counts_of(0, 9))
         kinds: set[str] = set()
         until = time.monotonic() + 30
-        while kinds < {"point", "stored"} and time.monotonic() < until:
+        while not kinds >= {"point", "stored"} and time.monotonic() < until:
             kinds |= {e["type"] for e in as_mappings(recorder.poll())}
             time.sleep(0.005)
     assert kinds >= {"point", "stored"}
