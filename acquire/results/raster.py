@@ -63,10 +63,9 @@ def raster_result(seen: Sequence[Observation], circumstances: Circumstances) -> 
     # the integral of (s + n)^2 scatters by 2 sigma sqrt(integral dt), so its root by sigma sqrt(dt)
     sigma = noise * np.sqrt(circumstances.sample_interval_s)
     peak = _peak(places, amplitude, moving)
-    at = places[np.argmax(amplitude)]
     reported = np.array([(o.reported_before.x, o.reported_before.y, o.reported_before.z) for o in points])
     scatter = np.sqrt(np.mean((reported - places) ** 2, axis=0))
-    widths = {AXES[i]: _width(places, amplitude, sigma, i, moving, at, float(scatter[i])) for i in moving}
+    widths = {AXES[i]: _width(places, amplitude, sigma, i, moving, float(scatter[i])) for i in moving}
     steps = tuple(float(np.median(np.diff(np.unique(np.round(places[:, i], 9))))) for i in moving)
     return RasterResult(
         axes=tuple(moving),
@@ -85,22 +84,28 @@ def raster_result(seen: Sequence[Observation], circumstances: Circumstances) -> 
 def _peak(places: Array, amplitude: Array, moving: list[int]) -> Peak | None:
     if len(moving) < 2:
         return None
+    rows = _level_with_the_peak(places, amplitude, moving[2:])
     try:
-        return peak_of(places[:, moving[0]], places[:, moving[1]], amplitude)
+        return peak_of(places[rows, moving[0]], places[rows, moving[1]], amplitude[rows])
     except MeasurementError:
         return None
 
 
+def _level_with_the_peak(places: Array, amplitude: Array, axes: Sequence[int]) -> NDArray[np.bool_]:
+    """Points that share these coordinates with the point of the largest level; all of them for no axes."""
+    at = places[np.argmax(amplitude)]
+    return np.asarray(np.all(np.abs(places[:, list(axes)] - at[list(axes)]) < 1e-9, axis=1))
+
+
 def _width(
-    places: Array, amplitude: Array, sigma: Array, axis: int, moving: list[int], at: Array, scatter_m: float
+    places: Array, amplitude: Array, sigma: Array, axis: int, moving: list[int], scatter_m: float
 ) -> Width | str:
     """Along the line of points that runs in `axis` through the place of the largest level.
 
     Its uncertainty holds the noise, the scatter of the stage, and what the spline makes of the steps: a fifteenth of
     what leaving out every other point changes, for a rule of the fourth order.
     """
-    others = [i for i in moving if i != axis]
-    rows = np.all(np.abs(places[:, others] - at[others]) < 1e-9, axis=1) if others else np.ones(len(places), bool)
+    rows = _level_with_the_peak(places, amplitude, [i for i in moving if i != axis])
     order = np.argsort(places[rows, axis])
     x, y, s = places[rows, axis][order], amplitude[rows][order], sigma[rows][order]
     try:
@@ -147,10 +152,14 @@ def quantities(result: RasterResult, circumstances: Circumstances) -> list[Quant
 
 
 def on_grid(result: RasterResult, values: Array) -> tuple[Array, Array, Array]:
-    """Coordinates of the two fastest axes and the values on their grid, (y, x); NaN where no point was taken."""
+    """Coordinates of the two fastest axes and the values on their grid, (y, x); NaN where no point was taken.
+
+    Of a volume it is the plane through the largest level.
+    """
     a, b = result.axes[0], result.axes[1]
-    x, column = np.unique(np.round(result.places[:, a], 9), return_inverse=True)
-    y, row = np.unique(np.round(result.places[:, b], 9), return_inverse=True)
+    rows = _level_with_the_peak(result.places, result.amplitude, result.axes[2:])
+    x, column = np.unique(np.round(result.places[rows, a], 9), return_inverse=True)
+    y, row = np.unique(np.round(result.places[rows, b], 9), return_inverse=True)
     grid = np.full((y.size, x.size), np.nan)
-    grid[row, column] = values
+    grid[row, column] = values[rows]
     return x, y, grid

@@ -25,6 +25,7 @@ from checks.radius import (
     told_apart,
 )
 from checks.water import speed_of_sound
+from checks.wavefront import wave_radius
 
 LEVELS_DB = (-3.0, -6.0)
 SPEED_U = 5e-4  # relative: a thermometer within 0.2 °C
@@ -77,7 +78,7 @@ def _plane_result(
         response.arrival_sigma_s[rows],
         response.order[rows],
         speed,
-        circumstances.distance_m,
+        wave_radius(circumstances),
     )
     fits = fit_edges(response, speed, circumstances.nominal_radius_m)
     if pivot is not None:
