@@ -106,6 +106,21 @@ class ArrivalTracker:
         return self._gate_s if place is None else place.time_s + (seen.commanded.z - place.z) / WATER_M_S
 
 
+class SharedTracker:
+    """One tracker for several checks that each ask for the same point, one after the other."""
+
+    def __init__(self, circumstances: Circumstances) -> None:
+        self._tracker = ArrivalTracker(circumstances)
+        self._seen: Observation | None = None
+        self._arrival = Arrival(0.0, inf, usable=False)
+
+    def update(self, seen: Observation) -> Arrival:
+        """Arrival at one more point, or at the same one again."""
+        if seen is not self._seen:
+            self._seen, self._arrival = seen, self._tracker.update(seen)
+        return self._arrival
+
+
 def _nearest(time_s: float, to_s: float, period_s: float) -> float:
     """The time, moved by whole periods to where it is nearest to another."""
     return time_s + round((to_s - time_s) / period_s) * period_s

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from checks.arrival import SharedTracker
 from checks.finding import Check
 from checks.live_angle import AngleCheck
 from checks.live_drift import DriftCheck
@@ -27,10 +28,11 @@ def make_checks(circumstances: Circumstances) -> list[Check]:
         SpectrumCheck(circumstances),
     ]
     if circumstances.scan_type == "rotation":
+        tracker = SharedTracker(circumstances)
         checks += [
-            PivotCheck(circumstances, rate),
+            PivotCheck(circumstances, rate, tracker),
             AngleCheck(circumstances, rate),
-            ElementNullCheck(circumstances),
+            ElementNullCheck(circumstances, tracker),
             ReachCheck(circumstances),
         ]
     return checks

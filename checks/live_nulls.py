@@ -12,7 +12,7 @@ from math import log, log10, pi, sin
 import numpy as np
 from numpy.typing import NDArray
 
-from checks.arrival import ArrivalTracker
+from checks.arrival import SharedTracker
 from checks.finding import Change, Finding, Size
 from checks.observation import Circumstances, Observation
 from checks.standing import Standing
@@ -166,9 +166,9 @@ class ElementNullCheck:
     close together. A note: the response is measured there, and it is none.
     """
 
-    def __init__(self, circumstances: Circumstances) -> None:
+    def __init__(self, circumstances: Circumstances, tracker: SharedTracker | None = None) -> None:
         self._frequencies = circumstances.frequencies_hz
-        self._tracker = ArrivalTracker(circumstances)
+        self._tracker = tracker or SharedTracker(circumstances)
         self._phase: NDArray[np.complex128] | None = None
         self._low, self._high = 0.0, np.inf
         self._strong = np.zeros(circumstances.frequencies_hz.size, bool)
@@ -196,8 +196,10 @@ class ElementNullCheck:
         clear = self._strong & (np.abs(signed) > CLEAR * seen.component_noise_v) & (product < self._limit)
         side = int(seen.commanded.theta > 0)
         low, high = self._positive[:, side], self._negative[:, side]
-        self._positive[:, side] = np.where(clear & (signed > 0), np.maximum(low, product), low)
-        self._negative[:, side] = np.where(clear & (signed < 0), np.minimum(high, product), high)
+        up, down = clear & (signed > 0) & (product > low), clear & (signed < 0) & (product < high)
+        if not (up.any() or down.any()):
+            return []
+        low[up], high[down] = product[up], product[down]
         # an error of angle zero moves the null outwards on one side and inwards on the other: the mean is free of it
         low, high = self._positive.mean(axis=1), self._negative.mean(axis=1)
         self._low, self._high = float(low[self._positive.min(axis=1) > 0].max(initial=0.0)), float(high.min())

@@ -7,7 +7,7 @@ from math import cos, degrees, hypot, log, sin, sqrt
 
 import numpy as np
 
-from checks.arrival import Arrival, ArrivalTracker
+from checks.arrival import Arrival, SharedTracker
 from checks.directivity import beam_w
 from checks.finding import Change, Finding, Severity, Size
 from checks.live_step import Arrived, StepWatch
@@ -15,6 +15,7 @@ from checks.observation import Circumstances, Observation
 from checks.pivot import PivotEstimate, PivotFit
 from checks.standing import Standing, due
 from checks.water import speed_of_sound, speed_or
+from checks.wavefront import wave_radius
 from checks.wording import decibel, mhz, mm
 
 FEWEST = 12
@@ -48,10 +49,12 @@ class PivotCheck:
     Each plane of rotation has an offset of its own. Jumps: see `checks.live_step`.
     """
 
-    def __init__(self, circumstances: Circumstances, false_alarm_rate: float) -> None:
+    def __init__(
+        self, circumstances: Circumstances, false_alarm_rate: float, tracker: SharedTracker | None = None
+    ) -> None:
         self._c = circumstances
         self._rate = false_alarm_rate
-        self._tracker = ArrivalTracker(circumstances)
+        self._tracker = tracker or SharedTracker(circumstances)
         self._plane = -1
         self._speed = speed_of_sound(20.0)
         self._fit = self._new_fit(self._speed)
@@ -63,7 +66,7 @@ class PivotCheck:
         self._steps = StepWatch(false_alarm_rate)
 
     def _new_fit(self, speed_m_s: float) -> PivotFit:
-        return PivotFit(speed_m_s, self._c.distance_m, self._c.planned_points)
+        return PivotFit(speed_m_s, wave_radius(self._c), self._c.planned_points)
 
     def update(self, seen: Observation) -> Iterable[Change]:
         """One more point."""
