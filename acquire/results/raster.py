@@ -24,7 +24,7 @@ class RasterResult:
     """A line or a plane; `axes` are the numbers of the axes that move, fastest first.
 
     Attributes:
-        places: shape (n, 3), metres. peak_v, trough_v, integral_v2s: shape (n,), noise taken off the integral.
+        places: shape (n, 3), metres. peak_v, trough_v, integral_v2s, noise_v: shape (n,), noise taken off the integral.
         amplitude: root of the integral, V s^½, and its standard uncertainty `sigma`, each shape (n,).
         widths: by axis name, along the line through the point nearest to the peak; or why there is none.
     """
@@ -34,6 +34,7 @@ class RasterResult:
     peak_v: Array
     trough_v: Array
     integral_v2s: Array
+    noise_v: Array
     amplitude: Array
     sigma: Array
     peak: Peak | None
@@ -73,6 +74,7 @@ def raster_result(seen: Sequence[Observation], circumstances: Circumstances) -> 
         peak_v=np.array([o.peak_v for o in points]),
         trough_v=np.array([-o.trough_v for o in points]),
         integral_v2s=integral,
+        noise_v=noise,
         amplitude=amplitude,
         sigma=sigma,
         peak=peak,
@@ -142,12 +144,9 @@ def quantities(result: RasterResult, circumstances: Circumstances) -> list[Quant
         if result.peak is None and not isinstance(width, str):
             found.append(Quantity("beam peak", width.peak_m, "m", None, {"axis": axis}, "top of the spline"))
     at = int(np.argmax(result.amplitude))
-    found.append(
-        Quantity("positive peak", float(result.peak_v[at]), "V", float(result.sigma[at]), {}, "largest of the map")
-    )
-    found.append(
-        Quantity("negative peak", float(result.trough_v[at]), "V", float(result.sigma[at]), {}, "at the same point")
-    )
+    for name, values in (("positive peak", result.peak_v), ("negative peak", result.trough_v)):
+        method = "at the point with the largest pulse-pressure-squared integral; uncertainty from noise alone"
+        found.append(Quantity(name, float(values[at]), "V", float(result.noise_v[at]), {}, method))
     return found
 
 
