@@ -144,9 +144,9 @@ def quantities(result: RasterResult, circumstances: Circumstances) -> list[Quant
         if result.peak is None and not isinstance(width, str):
             found.append(Quantity("beam peak", width.peak_m, "m", None, {"axis": axis}, "top of the spline"))
     at = int(np.argmax(result.amplitude))
-    for name, values in (("positive peak", result.peak_v), ("negative peak", result.trough_v)):
+    for name, heights in (("positive peak", result.peak_v), ("negative peak", result.trough_v)):
         method = "at the point with the largest pulse-pressure-squared integral; uncertainty from noise alone"
-        found.append(Quantity(name, float(values[at]), "V", float(result.noise_v[at]), {}, method))
+        found.append(Quantity(name, float(heights[at]), "V", float(result.noise_v[at]), {}, method))
     return found
 
 
