@@ -62,15 +62,15 @@ def broken_off(store: Path, points: int) -> Iterator[Recorder]:
         yield recorder
 
 
-@pytest.mark.parametrize("torn", ["segment-00000001.bin", "points.log"])
-def test_points_stored_after_a_torn_entry_are_found_after_another_death(tmp_path: Path, torn: str) -> None:
+@pytest.mark.parametrize(("torn", "points"), [("segment-00000001.bin", 120), ("points.log", 220)])
+def test_points_stored_after_a_torn_entry_are_found_after_another_death(tmp_path: Path, torn: str, points: int) -> None:
     store = tmp_path / "a.zarr"
     put_and_kill(store, 100)
     file = journal_folder(store) / torn
     with file.open("ab") as journal:
         journal.write(b"TPJ1\x40\x00\x00\x00 an entry that the death of the machine left unfinished")
-    put_and_kill(store, 220, continue_store=True)
-    assert_holds(store, 220)
+    put_and_kill(store, points, continue_store=True)
+    assert_holds(store, points)
     finish(store)
     assert_holds(store, PLANNED)
     assert open_stored(store).judged()[1] == open_stored(store).changes
