@@ -5,9 +5,10 @@ Element centre at (ex, ez) from the axis of rotation at angle zero; a plane wave
     t(theta) = t0 + (ez (cos theta - 1) - ex sin theta) / c + d n
 
 with d a slow drift along the order of visiting n (never the clock: a replay must agree). Linear least squares; the
-covariance is scaled by the observed residuals where they exceed the stated noise. Derived here; the curvature of
-the wave, X²/(2 L c), is put in by one more step. Where the element has moved during the scan, a step is one more
-column: 0 before, 1 after.
+covariance is scaled by the observed residuals where they exceed the stated noise. A wave that is bent with radius R
+arrives later by X²/(2 R c) beside the place where the element stood at angle zero, X = ex (cos - 1) + ez sin; that
+is put right afterwards. Derived here. Where the element has moved during the scan, a step is one more column: 0
+before, 1 after.
 """
 
 from __future__ import annotations
@@ -24,6 +25,7 @@ Vector = NDArray[np.float64]
 TIMING_FLOOR_S = 2e-11  # trigger jitter and sampling clock leave at least this much
 COLUMNS = 4
 WORST_CONDITION = 1e12
+BEND_U = 0.25  # relative, of what the bent wave takes and gives
 SCALE_U = 2e-3  # relative to the whole offset: speed of sound, scale of the rotation axis, slope of the beam
 
 
@@ -85,7 +87,7 @@ class PivotFit:
     """
 
     speed_m_s: float
-    distance_m: float
+    wave_radius_m: float
     order_scale: int
     normal: Vector = field(default_factory=lambda: np.zeros((COLUMNS, COLUMNS)))
     moment: Vector = field(default_factory=lambda: np.zeros(COLUMNS))
@@ -167,12 +169,9 @@ class PivotFit:
         solution, chi2, freedom = solved.coefficients, solved.square, solved.freedom
         covariance = solved.inverse * max(1.0, chi2 / freedom)
         _, x, z = solution[:3]
-        # the curvature of the wave adds X^2/(2 L c), X = ex cos + ez sin; with sin^2 = 2 (1 - cos) and
-        # sin cos = sin to leading order it takes the columns of ex and ez. The wave is bent as from the middle of
-        # the source or less (plane), so half of it is put right, and the whole range is uncertainty (rectangular)
-        bend = np.array([x * z, z**2 - x**2]) / self.distance_m if self.distance_m > 0 else np.zeros(2)
-        x, z = x + bend[0] / 2, z + bend[1] / 2
-        model = bend**2 / 12 + SCALE_U**2 * (x**2 + z**2)
+        bend = self._bend(float(x), float(z))
+        x, z = x + bend[0], z + bend[1]
+        model = (BEND_U * bend) ** 2 + SCALE_U**2 * (x**2 + z**2)
         return PivotEstimate(
             x_m=float(x),
             z_m=float(z),
@@ -187,6 +186,15 @@ class PivotFit:
             step_u_s=0.0 if self.after is None else float(np.sqrt(covariance[-1, -1])),
         )
 
+    def _bend(self, x: float, z: float) -> Vector:
+        """What the bent wave takes from the offset of a linear fit, shape (2,), m.
+
+        With u = 1 - cos, X² is z² (2 u - u²) + x² u² - 2 x z u sin. Projected on the columns, for angles spread
+        evenly, u² counts as 2.57 <u> u, and u sin as 1.8 <u> sin (leading order, derived).
+        """
+        u = -self.speed_m_s * float(self.normal[0, 2]) / float(self.normal[0, 0])
+        return np.array([-1.8 * u * x * z, (1 - 1.29 * u) * z * z + 1.29 * u * x * x]) / self.wave_radius_m
+
     def _equations(self, kept: int) -> tuple[Vector, Vector]:
         """Normal matrix and moments, the step as a last column where there is one: its row is the constant's."""
         normal, moment = self.normal[:kept, :kept], self.moment[:kept]
@@ -197,14 +205,14 @@ class PivotFit:
 
 
 def fit_pivot(
-    theta: Vector, arrival_s: Vector, sigma_s: Vector, order: NDArray[np.intp], speed_m_s: float, distance_m: float
+    theta: Vector, arrival_s: Vector, sigma_s: Vector, order: NDArray[np.intp], speed_m_s: float, wave_radius_m: float
 ) -> PivotEstimate | None:
     """All points at once; those far off (over five standard deviations) are left out once.
 
     All arrays have shape (n,): angles in rad, arrivals and their standard uncertainties in s, place in the order
     of visiting. None is returned where the angles do not determine the offset.
     """
-    fit = _fitted(theta, arrival_s, sigma_s, order, speed_m_s, distance_m)
+    fit = _fitted(theta, arrival_s, sigma_s, order, speed_m_s, wave_radius_m)
     estimate = fit.estimate()
     if estimate is None:
         return None
@@ -214,14 +222,14 @@ def fit_pivot(
     kept = residual <= 5 * max(spread, TIMING_FLOOR_S)
     if kept.all():
         return estimate
-    again = _fitted(theta[kept], arrival_s[kept], sigma_s[kept], order[kept], speed_m_s, distance_m).estimate()
+    again = _fitted(theta[kept], arrival_s[kept], sigma_s[kept], order[kept], speed_m_s, wave_radius_m).estimate()
     return again or estimate
 
 
 def _fitted(
-    theta: Vector, arrival_s: Vector, sigma_s: Vector, order: NDArray[np.intp], speed_m_s: float, distance_m: float
+    theta: Vector, arrival_s: Vector, sigma_s: Vector, order: NDArray[np.intp], speed_m_s: float, wave_radius_m: float
 ) -> PivotFit:
-    fit = PivotFit(speed_m_s, distance_m, int(order.max(initial=0)))
+    fit = PivotFit(speed_m_s, wave_radius_m, int(order.max(initial=0)))
     for a, t, s, n in zip(theta, arrival_s, sigma_s, order, strict=True):
         fit.add(float(a), float(t), float(s), int(n))
     return fit

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from math import pi, tan
+from math import inf, pi, tan
 
 from checks.observation import Circumstances
 
@@ -27,3 +27,9 @@ def curvature(c: Circumstances) -> float:
         return 1 / z - strength * half / 3
     bent = strength / tan(half) - gather / (1 - z * gather)
     return max(-STRONGEST / z, min(STRONGEST / z, bent))
+
+
+def wave_radius(c: Circumstances) -> float:
+    """Radius of curvature R, m, signed as `curvature`; infinite for a plane wave."""
+    bent = curvature(c)
+    return 1 / bent if bent else inf
