@@ -147,7 +147,7 @@ def load_any(path: Path) -> Profile:
     """
     tables = read(path)
     kind = tables.get("kind")
-    if kind not in MODELS:
+    if not isinstance(kind, str) or kind not in MODELS:
         raise ProfileError([f"{path}: kind: {kind!r} given; allowed: {', '.join(MODELS)}"])
     return validate(tables, kind, str(path))
 

@@ -50,7 +50,7 @@ def lines_of(table: dict[str, object], prefix: str = "") -> list[str]:
     """A line of TOML for each value, with its whole key."""
     found = []
     for key, value in table.items():
-        if isinstance(value, dict):
+        if isinstance(value, dict) and value:
             found += lines_of(value, f"{prefix}{key}.")
         else:
             found.append(f"{prefix}{key} = {_toml(value)}")
@@ -59,6 +59,8 @@ def lines_of(table: dict[str, object], prefix: str = "") -> list[str]:
 
 def _toml(value: object) -> str:
     """A value as TOML, on one line."""
+    if value == {}:
+        return "{}"
     if isinstance(value, dict):
         return "{ " + ", ".join(f"{key} = {_toml(inner)}" for key, inner in value.items()) + " }"
     if isinstance(value, list):
