@@ -66,9 +66,11 @@ def spectrum(state: ViewState, width: int, height: int) -> RenderableType:
     w = state.waveform
     if w is None or not w.spectrum_db:
         return Panel(Align.center("waiting for the first spectrum"), title="spectrum")
-    frequencies = [i * w.spectrum_step_hz / 1e6 for i in range(len(w.spectrum_db))]
-    canvas = Canvas(width, height, 0.0, frequencies[-1], -80.0, 0.0)
-    canvas.bars(frequencies, [-80.0] * len(frequencies), w.spectrum_db, "green")
+    analysed = state.started.frequencies_hz[-1] if state.started else float("inf")
+    shown = [db for i, db in enumerate(w.spectrum_db) if i * w.spectrum_step_hz <= 1.2 * analysed]
+    frequencies = [i * w.spectrum_step_hz / 1e6 for i in range(len(shown))]
+    canvas = Canvas(width, height, 0.0, max(frequencies[-1], 1e-9), -80.0, 0.0)
+    canvas.bars(frequencies, [-80.0] * len(shown), shown, "green")
     return Panel(framed(canvas, ("0 dB", "-80 dB"), ("0", "MHz", f"{frequencies[-1]:.0f}")), title="spectrum")
 
 
