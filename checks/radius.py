@@ -228,8 +228,12 @@ class RadiusLaw:
         return radius, np.sqrt(np.maximum(variance, 0.0)) / (2 * radius)
 
 
-def fit_law(fit: RadiusFit) -> RadiusLaw | None:
-    """Weighted linear least squares of a² against 1/f²; None with fewer than three frequencies."""
+def fit_law(fit: RadiusFit, speed_u: float = 0.0) -> RadiusLaw | None:
+    """Weighted linear least squares of a² against 1/f²; None with fewer than three frequencies.
+
+    What all frequencies have in common, `model_u_m` and the relative standard uncertainty `speed_u` of the speed of
+    sound, does not show in the scatter of the radii: it stretches a0 and b together.
+    """
     if fit.frequencies_hz.size < 3:
         return None
     square = fit.radius_m**2
@@ -243,6 +247,8 @@ def fit_law(fit: RadiusFit) -> RadiusLaw | None:
     covariance = np.linalg.pinv(weighted.T @ weighted) * max(1.0, float(residual @ residual) / freedom)
     covariance = covariance / np.outer(scale, scale)
     solution = solution / scale
+    shared = float(np.average(fit.model_u_m / fit.radius_m, weights=weight**2)) if fit.model_u_m.size else 0.0
+    covariance = covariance + 4 * (shared**2 + speed_u**2) * np.outer(solution, solution)
     radius = float(np.sqrt(max(solution[0], 1e-18)))
     u = float(np.sqrt(covariance[0, 0])) / (2 * radius)
     return RadiusLaw(radius, u, float(solution[1]), covariance)

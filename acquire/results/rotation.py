@@ -88,7 +88,9 @@ def _plane_result(
     fits = [in_a_real_beam(f, circumstances) for f in fits]
     usable = np.nonzero(response.usable)[0]
     halves = {(int(n), level): half_angle(response, int(n), level) for n in usable for level in LEVELS_DB}
-    return PlaneResult(response, halves, fits, radii_from_angles(response, speed), fit_law(fits[0]), pivot, speed)
+    return PlaneResult(
+        response, halves, fits, radii_from_angles(response, speed), fit_law(fits[0], SPEED_U), pivot, speed
+    )
 
 
 def wider(fit: RadiusFit, uncorrected: RadiusFit) -> RadiusFit:
