@@ -30,7 +30,7 @@ class Capture(Model):
     start_us: NonNegative | None = Field(
         default=None, description="start of the record after the trigger; left out: lead_us before the expected arrival"
     )
-    full_scale_v: Positive | None = Field(default=None, description="left out: found by autorange at the reference point")
+    full_scale_v: Positive | None = Field(default=None, description="left out: found by autorange at the reference")
     dwell_ms: NonNegative = Field(default=0.0, description="extra wait after the stage is still")
 
 
