@@ -74,6 +74,28 @@ def told_apart(fits: Sequence[RadiusFit]) -> bool:
     return len(fits) < 2 or fits[1].criterion - fits[0].criterion > CANNOT_TELL
 
 
+def in_doubt(fits: Sequence[RadiusFit]) -> list[RadiusFit]:
+    """The fits, the best one with what the other edge behaviours would give as one more uncertainty.
+
+    Each weighs exp(-d/2) for a criterion larger by d (Akaike weights; the unconditional variance of K. P. Burnham and
+    D. R. Anderson, Model Selection and Multimodel Inference, 2002, from memory). Where the data tell the behaviours
+    apart this is nothing.
+    """
+    best = fits[0]
+    weight = np.exp(-0.5 * np.array([f.criterion - best.criterion for f in fits]))
+    weight = weight / weight.sum()
+    radius = np.sqrt(weight @ np.array([(f.radius_m - best.radius_m) ** 2 for f in fits]))
+    zero = np.sqrt(weight @ np.array([(f.angle_zero - best.angle_zero) ** 2 for f in fits]))
+    common = np.hypot(radius, best.model_u_m) if best.model_u_m.size else radius
+    doubted = replace(
+        best,
+        radius_u_m=np.hypot(best.radius_u_m, radius),
+        angle_zero_u=float(np.hypot(best.angle_zero_u, zero)),
+        model_u_m=common,
+    )
+    return [doubted, *fits[1:]]
+
+
 def _fit(plane: PlaneResponse, lines: NDArray[np.intp], speed_m_s: float, nominal_m: float, edge: Edge) -> RadiusFit:
     from scipy.optimize import least_squares
 

@@ -21,6 +21,7 @@ from checks.radius import (
     fit_edges,
     fit_law,
     in_a_real_beam,
+    in_doubt,
     radii_from_angles,
     told_apart,
 )
@@ -85,7 +86,7 @@ def _plane_result(
         uncorrected = {fit.edge: fit for fit in fits}
         response = seen_from_the_source(response, pivot.x_m, pivot.z_m, circumstances)
         fits = [wider(f, uncorrected[f.edge]) for f in fit_edges(response, speed, circumstances.nominal_radius_m)]
-    fits = [in_a_real_beam(f, circumstances) for f in fits]
+    fits = in_doubt([in_a_real_beam(f, circumstances) for f in fits])
     usable = np.nonzero(response.usable)[0]
     halves = {(int(n), level): half_angle(response, int(n), level) for n in usable for level in LEVELS_DB}
     return PlaneResult(
