@@ -73,6 +73,7 @@ class ArrivalTracker:
         if self._first is None:
             time = _nearest(phase_s, self._gate_s, 1 / self._drive_hz)
             self._first = _Place(seen.plane, seen.commanded.theta, seen.commanded.z, time)
+            self._before.append(self._first)
             self._between_s, self._strength = group_s - time, strength
         coarse = self._coarse(seen, group_s - self._between_s, _group_sigma(low, high, noise) / self._spacing_hz)
         if coarse is None:

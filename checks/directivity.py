@@ -72,12 +72,11 @@ def plane_responses(seen: Sequence[Observation], circumstances: Circumstances) -
         MeasurementError: too few angles, or no reference point.
     """
     tracker = ArrivalTracker(circumstances)
-    arrivals = [tracker.update(o) for o in seen]
+    # outwards from angle zero, so that a point whose cycle is in doubt has its neighbour before it
+    outwards = sorted(seen, key=lambda o: (o.plane, abs(o.commanded.theta), o.index))
+    arrivals = {o.index: tracker.update(o) for o in outwards}
     planes = sorted({o.plane for o in seen})
-    return [
-        _plane([(o, a) for o, a in zip(seen, arrivals, strict=True) if o.plane == plane], circumstances)
-        for plane in planes
-    ]
+    return [_plane([(o, arrivals[o.index]) for o in seen if o.plane == plane], circumstances) for plane in planes]
 
 
 def _plane(pairs: list, circumstances: Circumstances) -> PlaneResponse:  # type: ignore[type-arg]
