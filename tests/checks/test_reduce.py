@@ -112,6 +112,7 @@ def test_how_points_are_batched_does_not_change_a_bit(
     for one, other in zip(whole, parts, strict=True):
         assert one.components.tobytes() == other.components.tobytes()
         assert one.side_components.tobytes() == other.side_components.tobytes()
+        assert one.component_noise_v.tobytes() == other.component_noise_v.tobytes()
         assert one.square_integral_v2s == other.square_integral_v2s
         assert (one.peak_v, one.trough_v, one.noise_rms_v) == (other.peak_v, other.trough_v, other.noise_rms_v)
 
