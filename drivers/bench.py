@@ -68,12 +68,11 @@ def open_instruments(
             thermometer = QueryThermometer(link("thermometer"), profiles["thermometer"])
 
         generator.open()
-        off_first = stack.enter_context(ExitStack())
+        stack.callback(generator.close)  # last, so that the source can be switched off until then
         for instrument in (scope, stage, thermometer):
             if instrument is not None:
                 instrument.open()
                 stack.callback(instrument.close)
-        off_first.callback(generator.close)
         stack.callback(_switch_off, generator)
         yield BenchInstruments(scope, stage, generator, thermometer)
 

@@ -86,8 +86,8 @@ class MotionStage(ABC):
         """Send an absolute move, SI; do not wait."""
 
     @abstractmethod
-    def _accepted(self, timeout_s: float, cancelled: StopAsked | None) -> None:
-        """See that the move was taken; `InstrumentError` if it was refused."""
+    def _accepted(self) -> None:
+        """See that the move was taken, which takes no time; `InstrumentError` if it was refused."""
 
     def _report(self) -> Report:
         """Ask where it is; `InstrumentError` if it is in alarm."""
@@ -174,7 +174,7 @@ class MotionStage(ABC):
             Cancelled: the operator asked to stop; the stage is stopped.
         """
         start, waited = monotonic(), False
-        self._accepted(timeout_s, cancelled)
+        self._accepted()
         while True:
             # all reports at once where the stage has been there before it was asked; else one to look
             self._ask_reports(REPORTS_WANTED if self._prompt else 1)

@@ -60,8 +60,8 @@ class IsoStage(MotionStage):
         words = " ".join(f"{self._words[axis]}{value / unit_of(axis):.4f}" for axis, value in target.items())
         self.link.write(f"{MODES} {words}")
 
-    def _accepted(self, timeout_s: float, cancelled: StopAsked | None) -> None:
-        self._until_ok(timeout_s, cancelled)
+    def _accepted(self) -> None:
+        self._until_ok(self.link.timeout_s, None)
 
     def _ask_reports(self, count: int) -> None:
         self.link.write_raw(b"?" * count)

@@ -26,8 +26,8 @@ class PrefixStage(MotionStage):
         moves = [f"{self._words[axis]}PA{value / unit_of(axis):.4f}" for axis, value in target.items()]
         self.link.write(";".join([*moves, "TB?"]))
 
-    def _accepted(self, timeout_s: float, cancelled: StopAsked | None) -> None:
-        self._check_error(self.link.read_line(timeout_s, cancelled))
+    def _accepted(self) -> None:
+        self._check_error(self.link.read_line())
 
     def _check_error(self, reply: str) -> None:
         match = re.match(r"\s*(\d+)\s*,\s*(.*)", reply)
