@@ -45,9 +45,7 @@ def test_a_piston_arrives_with_the_phase_of_its_two_waves() -> None:
 def test_a_focused_bowl_on_its_axis() -> None:
     # O'Neil, J. Acoust. Soc. Am. 21 (1949) 516, confirmed by independent quadrature.
     z = [20.0, 30, 35, 38, 40, 42, 45, 50, 60]
-    expected = np.array(
-        [1.884208, 7.736746, 15.046518, 26.005040, 26.918145, 23.931762, 15.957397, 3.428528, 3.912049]
-    )
+    expected = np.array([1.884208, 7.736746, 15.046518, 26.005040, 26.918145, 23.931762, 15.957397, 3.428528, 3.912049])
     np.testing.assert_allclose(np.abs(pressure(BOWL, [0], z)), expected, rtol=1e-3)
 
 
@@ -65,9 +63,7 @@ def test_harmonics_have_beams_narrower_by_the_given_power(shape: SourceShape, or
 
     def half_width(n: int) -> float:
         p = np.abs(pressure(shape, list(r), z, n))
-        return float(
-            np.interp(-0.5 * p[0], -p[: int(np.argmax(p < 0.4 * p[0]))], r[: int(np.argmax(p < 0.4 * p[0]))])
-        )
+        return float(np.interp(-0.5 * p[0], -p[: int(np.argmax(p < 0.4 * p[0]))], r[: int(np.argmax(p < 0.4 * p[0]))]))
 
     assert half_width(order) == pytest.approx(half_width(1) * order**-0.75, rel=0.01)
 

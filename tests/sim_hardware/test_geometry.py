@@ -72,9 +72,7 @@ def test_at_angle_zero_the_element_is_where_the_stage_says(
 def test_the_element_stays_on_a_sphere_and_its_axes_square(
     offset: tuple[float, float, float], theta: float, phi: float, tilt: float, zero: float
 ) -> None:
-    mechanics = MechanicsTruth(
-        pivot_offset_mm=offset, axis_tilt_x_deg=tilt, axis_tilt_z_deg=-tilt, angle_zero_deg=zero
-    )
+    mechanics = MechanicsTruth(pivot_offset_mm=offset, axis_tilt_x_deg=tilt, axis_tilt_z_deg=-tilt, angle_zero_deg=zero)
     placed = Mount(mechanics).place(Carriage(0, 0, 0.1, theta, phi))
     pivot = np.array([0, 0, 0.1]) - np.array(offset) * 1e-3
     assert np.linalg.norm(placed.centre - pivot) == pytest.approx(np.linalg.norm(offset) * 1e-3, abs=1e-12)

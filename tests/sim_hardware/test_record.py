@@ -68,6 +68,4 @@ def test_steepness_is_worked_out_for_a_plane_wave_where_it_is_not_given() -> Non
     truth = SourceTruth(reference_distance_mm=147.8512, reference_pressure_kpa=1000)
     found = shock_parameter(truth, replace(DRIVE, frequency_hz=1e6), 20.0)
     assert found == pytest.approx(3.482 / 3.5, rel=1e-3)
-    assert shock_parameter(truth, replace(DRIVE, frequency_hz=1e6, amplitude_v=5), 20.0) == pytest.approx(
-        found / 2
-    )
+    assert shock_parameter(truth, replace(DRIVE, frequency_hz=1e6, amplitude_v=5), 20.0) == pytest.approx(found / 2)
