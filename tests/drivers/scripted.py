@@ -34,11 +34,11 @@ class Hangup(Exception):
 
 
 def replies(script: Script, buffered: bytearray, send: Callable[[bytes], object]) -> None:
-    """Answer every whole line in the buffer; `?` is a character of its own, outside lines."""
+    """Answer every whole line in the buffer; some stages know characters outside lines."""
     while True:
-        if buffered[:1] == b"?" and b"?" in script.answers:
+        if b"?" in script.answers and buffered[:1] in (b"?", b"!", b"\x18"):
+            line = bytes(buffered[:1])
             del buffered[:1]
-            line = b"?"
         else:
             at = buffered.find(b"\n")
             if at < 0:

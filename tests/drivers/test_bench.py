@@ -34,6 +34,11 @@ class GeneratorScript(Script):
         return super().answer(line)
 
 
+def driving(generator: GeneratorScript) -> bool:
+    """The output is on."""
+    return generator.on
+
+
 @contextmanager
 def bench_of(generator: Script, temperature: bytes = b"21.3\n", lost: str = "") -> Iterator[Bench]:
     scripts: dict[str, Script] = {
@@ -64,11 +69,11 @@ def test_opening_switches_the_source_off_and_so_does_the_end() -> None:
     generator = GeneratorScript()
     with bench_of(generator) as bench:
         with opened(bench) as instruments:
-            assert not generator.on
+            assert not driving(generator)
             assert set(instruments.identities()) == {"oscilloscope", "stage", "generator", "thermometer"}
             instruments.generator.output(True)
-            assert generator.on
-        assert not generator.on
+            assert driving(generator)
+        assert not driving(generator)
 
 
 def test_an_exception_switches_the_source_off() -> None:
@@ -82,7 +87,7 @@ def test_an_exception_switches_the_source_off() -> None:
     with bench_of(generator) as bench:
         with pytest.raises(KeyboardInterrupt):
             fail(bench)
-        assert not generator.on
+        assert not driving(generator)
 
 
 def test_the_source_is_off_also_when_another_instrument_is_not_there() -> None:
@@ -90,7 +95,7 @@ def test_the_source_is_off_also_when_another_instrument_is_not_there() -> None:
     with bench_of(generator, lost="stage") as bench:
         with pytest.raises(CannotConnect, match="nothing answers"), opened(bench):
             pass
-        assert not generator.on
+        assert not driving(generator)
 
 
 def test_an_output_that_does_not_follow_is_not_believed() -> None:
@@ -118,7 +123,7 @@ def test_a_burst_is_set_without_touching_the_output() -> None:
     generator = GeneratorScript()
     with bench_of(generator) as bench, opened(bench) as instruments:
         instruments.generator.configure(Drive(2.25e6, 10.0, 12, 2e-3))
-        assert not generator.on
+        assert not driving(generator)
     for line in (b"SOURce:FREQuency 2250000", b"SOURce:VOLTage 10", b"SOURce:BURSt:NCYCles 12"):
         assert line in generator.heard
 

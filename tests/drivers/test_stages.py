@@ -49,6 +49,8 @@ class IsoScript(Script):
         self.heard.append(line)
         if line == b"?":
             return self.reports()
+        if line in (b"!", b"\x18"):
+            return b""
         if line == b"$I":
             return self.identity
         return self.lines.get(line.decode().split(" ")[0], b"ok\n")
