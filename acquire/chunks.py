@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections import deque
 from collections.abc import Sequence
 from concurrent.futures import Future, ThreadPoolExecutor
 from dataclasses import dataclass
@@ -11,8 +12,9 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from acquire.arrays import StoreArrays
 from acquire.journal import Journal
-from acquire.layout import WIDE_CHUNK, write_columns, write_counts
+from acquire.layout import WIDE_CHUNK
 from acquire.record import PointRecord
 from checks.observation import Observation
 
@@ -32,12 +34,14 @@ class ChunkWriter:
         self._pool = ThreadPoolExecutor(1, "chunks")
         self._pending: list[Future[None]] = []
         self.size = self.journal.chunk
+        self._arrays = StoreArrays(self.path)
+        self._idle: deque[NDArray[Any]] = deque()
         self._counts = self._fresh()
         self._records: list[PointRecord] = []
         self._wide: list[tuple[PointRecord, Observation]] = []
 
     def _fresh(self) -> NDArray[Any]:
-        return np.zeros((self.size, self.samples), self.dtype)
+        return self._idle.popleft() if self._idle else np.zeros((self.size, self.samples), self.dtype)
 
     def place(self, index: int, counts: NDArray[Any]) -> NDArray[Any]:
         """Copy a point's counts into the chunk in hand; the row stays valid until the chunk is full."""
@@ -78,20 +82,22 @@ class ChunkWriter:
         self._pool.shutdown(cancel_futures=True)
 
     def _submit_counts(self, durable: bool = False) -> None:
-        number, full, records = self._records[0].index // self.size, self._counts[: len(self._records)], self._records
         if not durable:
-            self._pending.append(self._pool.submit(self._write, number, full, records))
-        self._counts, self._records = self._fresh(), []
+            number = self._records[0].index // self.size
+            self._pending.append(self._pool.submit(self._write, number, self._counts, self._records))
+            self._counts = self._fresh()
+        self._records = []
 
     def _submit_columns(self) -> None:
         first = self._wide[0][0].index
         records, seen = zip(*self._wide, strict=True)
-        self._pending.append(self._pool.submit(write_columns, self.path, first, records, seen))
+        self._pending.append(self._pool.submit(self._arrays.write_columns, first, records, seen))
         self._wide = []
 
     def _write(self, number: int, counts: NDArray[Any], records: list[PointRecord]) -> None:
-        write_counts(self.path, number, counts)
+        self._arrays.write_counts(number, counts[: len(records)])
         self.journal.chunk_is_durable(number, records)
+        self._idle.append(counts)
 
     def _raise_failures(self) -> None:
         if len(self._pending) > MOST_PENDING:

@@ -7,11 +7,12 @@ reading ends at the first one that is not whole, which is where a death left the
 
 from __future__ import annotations
 
+import errno
 import os
 import shutil
 import struct
 import zlib
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator, Sequence
 from pathlib import Path
 from typing import Any, BinaryIO
 
@@ -19,6 +20,7 @@ import msgspec
 import numpy as np
 from numpy.typing import NDArray
 
+from acquire.durable import sync_folder
 from acquire.record import PointRecord
 
 HEAD = struct.Struct("<4sIII")  # magic, length of the record, length of the counts, CRC of both
@@ -31,15 +33,6 @@ decode = msgspec.msgpack.Decoder(PointRecord).decode
 def journal_folder(store: Path) -> Path:
     """The journal of a store, `NAME.journal` beside `NAME.zarr`."""
     return store.with_suffix(".journal")
-
-
-def sync_folder(folder: Path) -> None:
-    """Make the names in a folder durable."""
-    descriptor = os.open(folder, os.O_RDONLY)
-    try:
-        os.fsync(descriptor)
-    finally:
-        os.close(descriptor)
 
 
 class Journal:
@@ -71,14 +64,14 @@ class Journal:
                     file.truncate(whole)
                     os.fsync(file.fileno())
 
-    def add(self, record: PointRecord, counts: NDArray[Any]) -> None:
-        """Append a point."""
-        number = record.index // self.chunk
+    def add(self, records: Sequence[PointRecord], counts: Sequence[NDArray[Any]]) -> None:
+        """Append points of one chunk."""
+        number = records[0].index // self.chunk
         if number != self._number:
             self._open_segment(number)
         if self._segment is None:
             raise RuntimeError("no segment is open")
-        _append(self._segment, encode(record), counts.data.cast("B"))
+        _append(self._segment, [(encode(r), c.data.cast("B")) for r, c in zip(records, counts, strict=True)])
 
     def _open_segment(self, number: int) -> None:
         self.sync()
@@ -96,8 +89,7 @@ class Journal:
     def chunk_is_durable(self, number: int, records: list[PointRecord]) -> None:
         """The counts of a chunk are in the store: keep its records, drop its segment."""
         with (self.folder / LOG).open("ab", buffering=0) as log:
-            for record in records:
-                _append(log, encode(record), b"")
+            _append(log, [(encode(record), b"") for record in records])
             os.fdatasync(log.fileno())
         (self.folder / f"segment-{number:08d}.bin").unlink(missing_ok=True)
 
@@ -113,11 +105,13 @@ class Journal:
         shutil.rmtree(self.folder)
 
 
-def _append(file: BinaryIO, record: bytes, counts: bytes | memoryview) -> None:
-    check = zlib.crc32(counts, zlib.crc32(record))
-    parts = (HEAD.pack(MAGIC, len(record), len(counts), check), record, counts)
-    if os.writev(file.fileno(), parts) != HEAD.size + len(record) + len(counts):
-        raise OSError(28, "the disk took only part of an entry")
+def _append(file: BinaryIO, entries: Iterable[tuple[bytes, bytes | memoryview]]) -> None:
+    parts: list[bytes | memoryview] = []
+    for record, counts in entries:
+        check = zlib.crc32(counts, zlib.crc32(record))
+        parts += (HEAD.pack(MAGIC, len(record), len(counts), check), record, counts)
+    if os.writev(file.fileno(), parts) != sum(map(len, parts)):
+        raise OSError(errno.ENOSPC, "the disk took only part of an entry")
 
 
 def _entries(path: Path) -> Iterator[tuple[bytes, bytes]]:

@@ -1,4 +1,4 @@
-"""The arrays of a store: names, dimensions, units, and how points are put into them chunk by chunk."""
+"""What a store is made of: arrays with names, dimensions and units, and attributes."""
 
 from __future__ import annotations
 
@@ -15,7 +15,7 @@ import zarr
 from numpy.typing import NDArray
 from zarr.codecs import BloscCodec, Crc32cCodec
 
-from acquire.journal import sync_folder
+from acquire.durable import sync_folder, sync_tree
 from acquire.record import PointRecord
 from checks.observation import Circumstances, Observation
 
@@ -127,7 +127,7 @@ def create(
     _coordinate(group, "side_line", c.side_lines_hz, "Hz", "lines beside the drive frequency")
     _coordinate(group, "point", np.arange(points), "1", "order of capture")
     consolidate(path)
-    _sync_tree(path)
+    sync_tree(path)
 
 
 def _coordinate(group: zarr.Group, name: str, values: NDArray[Any], units: str, long_name: str) -> None:
@@ -171,46 +171,3 @@ def points_in_chunk(path: Path) -> int:
 def chunk_file(path: Path, number: int) -> Path:
     """Where a chunk of counts is kept."""
     return path / "counts" / "c" / str(number) / "0"
-
-
-def write_counts(path: Path, number: int, counts: NDArray[Any]) -> None:
-    """Write one chunk of counts, once, and make it durable; `counts` has shape (up to a chunk's points, samples)."""
-    array = zarr.open_array(path / "counts", mode="r+")
-    first = number * array.chunks[0]
-    array[first : first + counts.shape[0]] = counts
-    _sync_chunk(path, chunk_file(path, number))
-
-
-def write_columns(path: Path, first: int, records: Sequence[PointRecord], seen: Sequence[Observation]) -> None:
-    """Write the rows of some points into every column; `first` begins a chunk."""
-    group = zarr.open_group(path, mode="r+", use_consolidated=False)
-    for column in COLUMNS:
-        rows = [column.of(r, o) for r, o in zip(records, seen, strict=True)]
-        array = group[column.name]
-        if isinstance(array, zarr.Array):
-            array[first : first + len(rows)] = np.array(rows, column.dtype)
-        inner = "/0" * len(column.dimensions)
-        _sync_chunk(path, path / column.name / f"c/{first // WIDE_CHUNK}{inner}")
-
-
-def _sync_chunk(path: Path, file: Path) -> None:
-    """Make a chunk durable, and the names of the folders that were made for it."""
-    if file.exists():  # a chunk that is all fill value is not written
-        _sync_file(file)
-        for folder in file.parents:
-            if folder == path:
-                return
-            sync_folder(folder)
-
-
-def _sync_tree(path: Path) -> None:
-    for folder, _, files in os.walk(path):
-        for name in files:
-            _sync_file(Path(folder, name))
-        sync_folder(Path(folder))
-    sync_folder(path.parent)
-
-
-def _sync_file(file: Path) -> None:
-    with file.open("rb") as opened:
-        os.fsync(opened.fileno())

@@ -11,9 +11,9 @@ import gc
 import pickle
 import shutil
 import signal
+import socket
 import sys
 import traceback
-from multiprocessing.connection import Connection
 from pathlib import Path
 from time import monotonic
 from typing import Any
@@ -134,9 +134,8 @@ class RecorderLoop:
             self._pipe.tell(wire.FREED + str(len(part)).encode())
             if not self._unsynced:
                 self._oldest = monotonic()
-            for record, row in zip(part, rows, strict=True):
-                self._journal.add(record, row)
-                self._unsynced += 1
+            self._journal.add(part, rows)
+            self._unsynced += len(part)
             self._judge_part(part, rows)
             if self._unsynced >= SYNC_POINTS:
                 self._sync()
@@ -197,7 +196,7 @@ def main() -> int:
     """Entry point: two file descriptors, of the pipe and of the ring."""
     for number in (signal.SIGINT, signal.SIGTERM, signal.SIGHUP):
         signal.signal(number, signal.SIG_IGN)  # they are for the daemon, whose end this process sees
-    pipe = Channel(Connection(int(sys.argv[1])))
+    pipe = Channel(socket.socket(fileno=int(sys.argv[1])))
     setup: wire.Setup = pickle.loads(pipe.receive())  # from the parent process only
     ring = Ring(int(sys.argv[2]), setup.slots, setup.samples, setup.dtype)
     loop = None

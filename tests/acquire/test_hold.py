@@ -34,5 +34,5 @@ def test_it_is_not_passed_to_other_processes(tmp_path: Path) -> None:
     hold = StoreHold(tmp_path)
     with subprocess.Popen([sys.executable, "-c", "input()"], stdin=subprocess.PIPE, close_fds=False) as other:
         hold.close()
-        StoreHold(tmp_path, wait_s=0.0).close()
+        StoreHold(tmp_path, wait_s=20.0).close()  # while the other process still runs
         other.communicate(b"\n")

@@ -16,7 +16,7 @@ INT16 = np.dtype(np.int16)
 def filled(store: Path, points: int) -> Journal:
     journal = Journal(store, CHUNK)
     for i in range(points):
-        journal.add(record_of(i, points), counts_of(i, points))
+        journal.add([record_of(i, points)], [counts_of(i, points)])
     journal.sync()
     return journal
 
@@ -67,7 +67,7 @@ def test_records_after_a_gap_are_not_believed(tmp_path: Path) -> None:
     store = tmp_path / "a.zarr"
     journal = Journal(store, CHUNK)
     for i in (0, 1, 3):
-        journal.add(record_of(i, 4), counts_of(i, 4))
+        journal.add([record_of(i, 4)], [counts_of(i, 4)])
     journal.close()
     assert [r.index for r in read_journal(store, INT16)[0]] == [0, 1]
 
