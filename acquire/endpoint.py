@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
+import warnings
 from pathlib import Path
-from urllib.parse import urlsplit
+from urllib.parse import SplitResult, urlsplit
 
 from platformdirs import user_runtime_path
 
@@ -17,7 +18,10 @@ class NoEndpoint(Exception):
 
 def runtime_folder() -> Path:
     """Where local sockets of this user live."""
-    return user_runtime_path("truepivot")
+    with warnings.catch_warnings():
+        # without XDG_RUNTIME_DIR a folder of this user's under /tmp does as well
+        warnings.simplefilter("ignore")
+        return user_runtime_path("truepivot")
 
 
 def default_endpoint(bench: str) -> str:
@@ -46,11 +50,19 @@ def checked(endpoint: str) -> str:
         Path(path).parent.mkdir(parents=True, exist_ok=True)
         return endpoint
     parts = urlsplit(endpoint)
-    if parts.scheme != "tcp" or parts.port is None:
+    if parts.scheme != "tcp" or not _has_port(parts):
         raise NoEndpoint(f"{endpoint!r} is no endpoint; allowed: ipc://PATH or tcp://127.0.0.1:PORT")
     if parts.hostname not in LOOPBACK:
         raise NoEndpoint(f"{endpoint!r}: the daemon answers on this machine only (tcp://127.0.0.1:PORT)")
     return endpoint
+
+
+def _has_port(parts: SplitResult) -> bool:
+    """A port, with room for the next one, where the events are."""
+    try:
+        return parts.port is not None and 0 < parts.port < 65_535
+    except ValueError:  # no number, or beyond 65535
+        return False
 
 
 def only_endpoint() -> str:
