@@ -36,7 +36,7 @@ class Hangup(Exception):
 def replies(script: Script, buffered: bytearray, send: Callable[[bytes], object]) -> None:
     """Answer every whole line in the buffer; some stages know characters outside lines."""
     while True:
-        if b"?" in script.answers and buffered[:1] in (b"?", b"!", b"\x18"):
+        if b"?" in script.answers and bytes(buffered[:1]) in (b"?", b"!", b"\x18"):
             line = bytes(buffered[:1])
             del buffered[:1]
         else:
