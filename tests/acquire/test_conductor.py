@@ -1,0 +1,238 @@
+"""The order of things in a scan, with instruments that only note what they are asked for."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from pathlib import Path
+from typing import Any, cast
+
+import numpy as np
+import pytest
+
+from acquire.conductor import RECONNECTS, Conductor
+from acquire.control import Control
+from acquire.messages import Notice, StateChanged
+from acquire.prepare import Job
+from acquire.store import open_stored
+from acquire.travel import PlanRefused
+from drivers.bench import BenchInstruments
+from drivers.errors import LinkTimeout, OutOfLimits
+from drivers.roles import CaptureSettings, Drive
+from drivers.trace import Scaling, Trace
+from profiles.load import load_bench, load_scan, load_sensor, load_source
+from profiles.scan import Scan
+
+
+@dataclass
+class FakeLink:
+    """In step until told otherwise."""
+
+    in_step: bool = True
+
+
+@dataclass
+class Fakes:
+    """All instruments of a bench; `log` has their calls in order, `fail_at` makes captures fail."""
+
+    log: list[str] = field(default_factory=list)
+    fail_at: set[int] = field(default_factory=set)
+    captures: int = 0
+    on: bool = False
+    at: dict[str, float] = field(default_factory=dict)
+    stop_after: int | None = None
+    control: Control = field(default_factory=Control)
+    settings: CaptureSettings | None = None
+    link: FakeLink = field(default_factory=FakeLink)
+    identity: str = "fake"
+    axes: tuple[str, ...] = ("x", "y", "z", "theta", "phi")
+
+    # --- oscilloscope
+    def full_scales_v(self) -> tuple[float, ...]:
+        return (0.1, 1.0, 10.0)
+
+    def configure(self, settings: Any) -> Any:
+        if isinstance(settings, Drive):
+            self.log.append("drive")
+            return None
+        self.settings = settings
+        return settings
+
+    def arm(self) -> None:
+        self.log.append(f"arm, source {'on' if self.on else 'off'}")
+
+    def wait(self, timeout_s: float, cancelled: Any = None) -> None:
+        self.captures += 1
+        if self.captures in self.fail_at:
+            self.link.in_step = False
+            raise LinkTimeout("the fake did not reply")
+        if self.stop_after is not None and self.captures >= self.stop_after:
+            self.control.ask_stop("by the test")
+
+    def ask_samples(self) -> None:
+        self.log.append("ask samples")
+
+    def read(self) -> Trace:
+        return self.read_samples()
+
+    def read_samples(self) -> Trace:
+        assert self.settings is not None
+        self.log.append("read")
+        s = self.settings
+        t = s.start_s + np.arange(s.points) / s.sample_rate_hz
+        wave = 0.04 * np.sin(2 * np.pi * 2.25e6 * t) * ((t > 80.7e-6) & (t < 86.1e-6))
+        per_count = s.full_scale_v / 65536
+        counts = np.clip(np.round(wave / per_count), -32768, 32767).astype(np.int16)
+        return Trace(
+            counts, Scaling(per_count, 0.0, 1 / s.sample_rate_hz, s.start_s), -32768, 32767, s.averages, s.full_scale_v
+        )
+
+    # --- stage
+    def referenced(self) -> bool:
+        return True
+
+    def start_move(self, target: Mapping[str, float]) -> None:
+        self.log.append(f"move {np.degrees(target['theta']):.0f}")
+        self.at = dict(target)
+
+    def finish_move(self, timeout_s: float, cancelled: Any = None) -> dict[str, float]:
+        self.log.append("still")
+        return dict(self.at)
+
+    def position(self) -> dict[str, float]:
+        return dict(self.at)
+
+    def ask_position(self) -> None:
+        self.log.append("ask position")
+
+    def read_position(self) -> dict[str, float]:
+        return dict(self.at)
+
+    def stop(self) -> None:
+        self.log.append("stop")
+
+    # --- generator
+    def output(self, on: bool) -> None:
+        self.log.append(f"source {'on' if on else 'off'}")
+        self.on = on
+
+    def recover(self) -> None:
+        self.log.append("recover")
+        self.link.in_step = True
+        self.on = False
+
+
+SCAN: dict[str, Any] = {
+    "rotation": {"span_deg": 40.0, "step_deg": 10.0, "order": "one-way"},
+    "revisit_every": 0,
+    "capture": {"sample_rate_mhz": 125.0, "points": 2500, "full_scale_v": 0.1},
+}
+
+
+def conducted(fakes: Fakes, store: Path, **changes: Any) -> tuple[Conductor, list[Any]]:
+    tables = load_scan("demo-rotation-fast").model_dump(mode="json") | SCAN | changes
+    scan = Scan.model_validate(tables)
+    job = Job(load_bench("demo-tank"), load_sensor(scan.sensor), load_source(scan.source), scan)
+    one = cast(Any, fakes)
+    events: list[Any] = []
+    instruments = BenchInstruments(scope=one, stage=one, generator=one, thermometer=None)
+    return Conductor(job, instruments, fakes.control, events.append, store), events
+
+
+def states(events: list[Any]) -> list[str]:
+    return [e.state for e in events if isinstance(e, StateChanged)]
+
+
+def test_the_stage_starts_for_the_next_point_before_the_waveform_is_read(tmp_path: Path) -> None:
+    fakes = Fakes()
+    conductor, events = conducted(fakes, tmp_path / "s.zarr")
+    assert conductor.run()
+    at = fakes.log.index("move -10")
+    assert fakes.log[at - 2 : at + 3] == ["ask position", "ask samples", "move -10", "read", "still"]
+    assert states(events) == ["preparing", "running"]
+    assert [round(float(np.degrees(r.commanded[3]))) for r in open_stored(tmp_path / "s.zarr").records] == [
+        -20,
+        -10,
+        0,
+        10,
+        20,
+    ]
+
+
+def test_the_source_is_on_for_every_capture_and_off_at_the_end(tmp_path: Path) -> None:
+    fakes = Fakes()
+    conducted(fakes, tmp_path / "s.zarr")[0].run()
+    assert {line for line in fakes.log if line.startswith("arm")} == {"arm, source on"}
+    assert fakes.log[-1] == "source off"
+    assert not fakes.on
+
+
+def test_a_stop_ends_the_scan_with_what_was_stored_and_the_source_off(tmp_path: Path) -> None:
+    fakes = Fakes(stop_after=4)
+    conductor, events = conducted(fakes, tmp_path / "s.zarr")
+    assert not conductor.run()
+    assert not fakes.on
+    assert "stop" in fakes.log
+    assert "stopping" in states(events)
+    assert 0 < len(open_stored(tmp_path / "s.zarr").records) < 5
+
+
+def test_a_link_that_fails_is_made_anew_and_the_point_is_taken_again(tmp_path: Path) -> None:
+    fakes = Fakes(fail_at={3})
+    conductor, events = conducted(fakes, tmp_path / "s.zarr")
+    assert conductor.run()
+    assert "recover" in fakes.log
+    assert len(open_stored(tmp_path / "s.zarr").records) == 5
+    assert any("reconnecting, try 1 of" in e.text for e in events if isinstance(e, Notice))
+
+
+def test_a_link_that_fails_for_good_ends_the_scan_and_keeps_what_was_stored(tmp_path: Path) -> None:
+    fakes = Fakes(fail_at=set(range(4, 100)))
+    conductor, _ = conducted(fakes, tmp_path / "s.zarr")
+    with pytest.raises(LinkTimeout, match="the fake did not reply"):
+        conductor.run()
+    assert fakes.captures == 3 + RECONNECTS + 1
+    assert not fakes.on
+    assert len(open_stored(tmp_path / "s.zarr").records) == 2
+
+
+def test_an_exception_anywhere_switches_the_source_off(tmp_path: Path) -> None:
+    class Stuck(Fakes):
+        def start_move(self, target: Mapping[str, float]) -> None:
+            if self.captures >= 3:
+                raise OutOfLimits("stuck")
+            super().start_move(target)
+
+    fakes = Stuck()
+    with pytest.raises(OutOfLimits):
+        conducted(fakes, tmp_path / "s.zarr")[0].run()
+    assert not fakes.on
+
+
+def test_nothing_moves_and_nothing_drives_when_the_plan_is_refused(tmp_path: Path) -> None:
+    fakes = Fakes()
+    with pytest.raises(PlanRefused, match="z = 500 mm"):
+        conducted(fakes, tmp_path / "s.zarr", position={"z_mm": 500.0})[0].run()
+    assert not any(line.startswith(("move", "source on")) for line in fakes.log)
+
+
+def test_without_a_range_in_the_scan_it_is_found_at_the_reference_point(tmp_path: Path) -> None:
+    fakes = Fakes()
+    capture = {"sample_rate_mhz": 125.0, "points": 2500}
+    conducted(fakes, tmp_path / "s.zarr", capture=capture)[0].run()
+    assert fakes.log.index("move 0") < fakes.log.index("move -20")
+    assert {r.full_scale_v for r in open_stored(tmp_path / "s.zarr").records} == {0.1}
+
+
+def test_backlash_is_taken_up_from_below(tmp_path: Path) -> None:
+    fakes = Fakes()
+    conductor, _ = conducted(fakes, tmp_path / "s.zarr")
+    bench = load_bench("demo-tank")
+    theta = cast(Any, bench.axes.theta).model_copy(update={"backlash_deg": 3.0})
+    axes = bench.axes.model_copy(update={"theta": theta})
+    conductor._job = Job(
+        bench.model_copy(update={"axes": axes}), conductor._job.sensor, conductor._job.source, conductor._job.scan
+    )
+    conductor.run()
+    moves = [line for line in fakes.log if line.startswith("move")]
+    assert moves[:4] == ["move -23", "move -20", "move -13", "move -10"]
