@@ -14,7 +14,6 @@ from numpy.typing import NDArray
 
 from acquire.arrays import StoreArrays
 from acquire.journal import Journal
-from acquire.layout import WIDE_CHUNK
 from acquire.record import PointRecord
 from checks.observation import Observation
 
@@ -38,7 +37,7 @@ class ChunkWriter:
         self._idle: deque[NDArray[Any]] = deque()
         self._counts = self._fresh()
         self._records: list[PointRecord] = []
-        self._wide: list[tuple[PointRecord, Observation]] = []
+        self._seen: list[Observation] = []
 
     def _fresh(self) -> NDArray[Any]:
         return self._idle.popleft() if self._idle else np.zeros((self.size, self.samples), self.dtype)
@@ -56,11 +55,9 @@ class ChunkWriter:
     def add(self, records: Sequence[PointRecord], seen: Sequence[Observation], durable: bool = False) -> None:
         """Points whose counts were placed, reduced; in order, within one chunk, which may be in the store already."""
         self._records += records
-        self._wide += zip(records, seen, strict=True)
+        self._seen += seen
         if self.ends(records[-1].index):
-            self._submit_counts(durable)
-        if records[-1].index % WIDE_CHUNK == WIDE_CHUNK - 1:
-            self._submit_columns()
+            self._submit(durable)
         self._raise_failures()
 
     def flush(self) -> None:
@@ -70,9 +67,8 @@ class ChunkWriter:
             OSError: the disk did not take it.
         """
         if self._records:
-            self._submit_counts()
-        if self._wide:
-            self._submit_columns()
+            self._submit()
+        self._pending.append(self._pool.submit(self._arrays.write_columns))
         for future in self._pending:
             future.result()
         self._pending.clear()
@@ -81,22 +77,19 @@ class ChunkWriter:
         """End the thread."""
         self._pool.shutdown(cancel_futures=True)
 
-    def _submit_counts(self, durable: bool = False) -> None:
-        if not durable:
-            number = self._records[0].index // self.size
-            self._pending.append(self._pool.submit(self._write, number, self._counts, self._records))
-            self._counts = self._fresh()
-        self._records = []
+    def _submit(self, durable: bool = False) -> None:
+        write = self._gather if durable else self._write
+        self._pending.append(self._pool.submit(write, self._counts, self._records, self._seen))
+        self._counts, self._records, self._seen = self._fresh(), [], []
 
-    def _submit_columns(self) -> None:
-        first = self._wide[0][0].index
-        records, seen = zip(*self._wide, strict=True)
-        self._pending.append(self._pool.submit(self._arrays.write_columns, first, records, seen))
-        self._wide = []
-
-    def _write(self, number: int, counts: NDArray[Any], records: list[PointRecord]) -> None:
+    def _write(self, counts: NDArray[Any], records: list[PointRecord], seen: list[Observation]) -> None:
+        number = records[0].index // self.size
         self._arrays.write_counts(number, counts[: len(records)])
         self.journal.chunk_is_durable(number, records)
+        self._gather(counts, records, seen)
+
+    def _gather(self, counts: NDArray[Any], records: list[PointRecord], seen: list[Observation]) -> None:
+        self._arrays.gather(records, seen)
         self._idle.append(counts)
 
     def _raise_failures(self) -> None:

@@ -97,13 +97,15 @@ def create(
 ) -> None:
     """Make an empty store of `shape` (points, samples), all arrays at their final size."""
     points, samples = shape
-    in_chunk = max(1, min(MOST_POINTS, CHUNK_BYTES // (samples * np.dtype(dtype).itemsize), points))
+    in_chunk = MOST_POINTS
+    while in_chunk > 1 and in_chunk * samples * np.dtype(dtype).itemsize > CHUNK_BYTES:
+        in_chunk //= 2  # so that chunks end where wide chunks end
     group = zarr.create_group(path, attributes=attributes)
     lengths = {"axis": 5, "frequency": circumstances.frequencies_hz.size, "side_line": 2}
     group.create_array(
         "counts",
         shape=shape,
-        chunks=(in_chunk, samples),
+        chunks=(min(in_chunk, points), samples),
         dtype=dtype,
         compressors=[BloscCodec(cname="lz4", clevel=1, shuffle="bitshuffle"), Crc32cCodec()],
         dimension_names=("point", "sample"),
