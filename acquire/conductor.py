@@ -243,11 +243,12 @@ class Conductor:
         scope.wait(self._capture_timeout_s(), self._control.stop_asked)
         captured = monotonic()
         stage = self._i.stage
-        stage.ask_position()  # both are asked before either answer is awaited
+        # all is asked before any answer is awaited; the stage answers in order, so the position is the old one
+        stage.ask_position()
         scope.ask_samples()
-        after = self._where(stage.read_position())
         if following is not None:
             self._start(following)
+        after = self._where(stage.read_position())
         if point.index % TEMPERATURE_EVERY == 0:
             self._look_after_temperature(first=point.index == 0)
         trace = scope.read_samples()

@@ -217,7 +217,7 @@ class MotionStage(ABC):
             self.link.reconnect()
         self._halt()
 
-    # --- helpers ----------------------------------------------------------------------------------------
+    # --- inside ----------------------------------------------------------------------------------------
 
     def _check_identity(self) -> None:
         self.identity = self._identify()
