@@ -23,7 +23,7 @@ class StoreArrays:
         self._path = path
         self._arrays = dict(zarr.open_group(path, mode="r+").arrays())
         self._rows = {
-            column.name: np.zeros((min(WIDE_CHUNK, array.shape[0]), *array.shape[1:]), array.dtype)
+            column.name: np.full((min(WIDE_CHUNK, array.shape[0]), *array.shape[1:]), 0, array.dtype)
             for column in COLUMNS
             for array in [self._arrays[column.name]]
         }

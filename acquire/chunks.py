@@ -2,11 +2,11 @@
 
 from __future__ import annotations
 
-from collections import deque
 from collections.abc import Sequence
 from concurrent.futures import Future, ThreadPoolExecutor
 from dataclasses import dataclass
 from pathlib import Path
+from queue import SimpleQueue
 from typing import Any
 
 import numpy as np
@@ -17,7 +17,7 @@ from acquire.journal import Journal
 from acquire.record import PointRecord
 from checks.observation import Observation
 
-MOST_PENDING = 3  # chunks that wait for the disk; beyond that the recorder waits too, and in the end the bench
+BUFFERS = 4  # chunks in hand or waiting for the disk; beyond that the recorder waits too, and in the end the bench
 
 
 @dataclass
@@ -34,13 +34,12 @@ class ChunkWriter:
         self._pending: list[Future[None]] = []
         self.size = self.journal.chunk
         self._arrays = StoreArrays(self.path)
-        self._idle: deque[NDArray[Any]] = deque()
-        self._counts = self._fresh()
+        self._idle: SimpleQueue[NDArray[Any]] = SimpleQueue()
+        for _ in range(BUFFERS):
+            self._idle.put(np.full((self.size, self.samples), 0, self.dtype))  # all the memory that it will ever need
+        self._counts = self._idle.get()
         self._records: list[PointRecord] = []
         self._seen: list[Observation] = []
-
-    def _fresh(self) -> NDArray[Any]:
-        return self._idle.popleft() if self._idle else np.zeros((self.size, self.samples), self.dtype)
 
     def place(self, index: int, counts: NDArray[Any]) -> NDArray[Any]:
         """Copy a point's counts into the chunk in hand; the row stays valid until the chunk is full."""
@@ -80,21 +79,22 @@ class ChunkWriter:
     def _submit(self, durable: bool = False) -> None:
         write = self._gather if durable else self._write
         self._pending.append(self._pool.submit(write, self._counts, self._records, self._seen))
-        self._counts, self._records, self._seen = self._fresh(), [], []
+        self._counts, self._records, self._seen = self._idle.get(), [], []
 
     def _write(self, counts: NDArray[Any], records: list[PointRecord], seen: list[Observation]) -> None:
         number = records[0].index // self.size
-        self._arrays.write_counts(number, counts[: len(records)])
-        self.journal.chunk_is_durable(number, records)
-        self._gather(counts, records, seen)
+        try:
+            self._arrays.write_counts(number, counts[: len(records)])
+            self.journal.chunk_is_durable(number, records)
+        finally:
+            self._idle.put(counts)
+        self._arrays.gather(records, seen)
 
     def _gather(self, counts: NDArray[Any], records: list[PointRecord], seen: list[Observation]) -> None:
+        self._idle.put(counts)
         self._arrays.gather(records, seen)
-        self._idle.append(counts)
 
     def _raise_failures(self) -> None:
-        if len(self._pending) > MOST_PENDING:
-            self._pending.pop(0).result()
         done = [f for f in self._pending if f.done()]
         self._pending = [f for f in self._pending if not f.done()]
         for future in done:

@@ -30,7 +30,10 @@ RING_BYTES = 64 << 20
 FEWEST_SLOTS, MOST_SLOTS = 4, 256  # records of so many points fit into the pipe, so sending one never waits
 TIMING = 0.01  # of a sample interval: by so little may the times of a record differ
 START_S, FINISH_S, STALL_S = 60.0, 600.0, 60.0
-ONE_THREAD = ("OPENBLAS_NUM_THREADS", "OMP_NUM_THREADS", "MKL_NUM_THREADS", "BLIS_NUM_THREADS")
+ONE = (  # one thread for the same sums in the same order, one heap for all threads
+    *("OPENBLAS_NUM_THREADS", "OMP_NUM_THREADS", "MKL_NUM_THREADS", "BLIS_NUM_THREADS"),
+    "MALLOC_ARENA_MAX",
+)
 
 
 class RecorderFailed(Exception):
@@ -73,7 +76,7 @@ class Recorder:
         self._pipe, theirs = channel_pair()
         descriptors = (theirs.fileno(), self._ring.descriptor)
         command = [sys.executable, "-m", "acquire.recorder_process", *map(str, descriptors)]
-        environment = os.environ | dict.fromkeys(ONE_THREAD, "1")
+        environment = os.environ | dict.fromkeys(ONE, "1")
         # a session of its own: a Ctrl-C at the terminal is for the daemon, which then ends the recorder in order
         self._process = subprocess.Popen(
             command, pass_fds=descriptors, env=environment, start_new_session=True, stdin=subprocess.DEVNULL

@@ -18,6 +18,7 @@ from pathlib import Path
 from time import monotonic
 from typing import Any
 
+import zarr
 from numpy.typing import NDArray
 
 from acquire import wire
@@ -196,6 +197,7 @@ def main() -> int:
     """Entry point: two file descriptors, of the pipe and of the ring."""
     for number in (signal.SIGINT, signal.SIGTERM, signal.SIGHUP):
         signal.signal(number, signal.SIG_IGN)  # they are for the daemon, whose end this process sees
+    zarr.config.set({"threading.max_workers": 1})  # chunks are written one at a time
     pipe = Channel(socket.socket(fileno=int(sys.argv[1])))
     setup: wire.Setup = pickle.loads(pipe.receive())  # from the parent process only
     ring = Ring(int(sys.argv[2]), setup.slots, setup.samples, setup.dtype)
