@@ -15,7 +15,7 @@ import socket
 import sys
 import traceback
 from pathlib import Path
-from time import monotonic
+from time import monotonic, sleep
 from typing import Any
 
 import zarr
@@ -37,7 +37,8 @@ from acquire.thinned import thinned
 
 SYNC_POINTS = 64  # made durable at the latest after so many points
 SYNC_S = 0.05  # or after so long
-BATCH = 16
+BATCH = 64
+FLOW_S, GATHER_S = 0.05, 0.008  # batches that close together; how long to gather the next one
 PICTURE_S = 0.2
 
 
@@ -52,6 +53,7 @@ class RecorderLoop:
         self._slot = 0
         self._unsynced = 0
         self._oldest = 0.0
+        self._batch_at = 0.0
         self._drawn = 0.0
         self._judge = Judge(setup.circumstances)
         already = self._prepare()
@@ -112,13 +114,19 @@ class RecorderLoop:
                 return
 
     def _frames(self, wait_s: float | None) -> tuple[list[bytes], bool]:
-        """What has come, a batch at most; and whether that was the last."""
+        """What has come, a batch at most; and whether that was the last.
+
+        While points flow fast a few are gathered first: eight cost as much to reduce as one.
+        """
         frames: list[bytes] = []
         try:
             while len(frames) < BATCH and self._pipe.ready(0.0 if frames else wait_s):
                 frames.append(self._pipe.receive())
                 if frames[-1][:1] == wire.FINISH:
                     break
+                if len(frames) == 1 and monotonic() - self._batch_at < FLOW_S:
+                    sleep(GATHER_S)
+            self._batch_at = monotonic()
         except (EOFError, OSError):
             return frames, True
         return frames, False

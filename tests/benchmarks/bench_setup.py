@@ -28,15 +28,16 @@ RUN_S = 900.0
 
 
 def write_bank(path: Path) -> None:
-    """Tone bursts with harmonics and noise, 12 significant bits, different from point to point."""
+    """Tone bursts with harmonics, the noise different from point to point: an element that hears alike from everywhere.
+
+    They are served in turn whatever the pose, so nothing in them may depend on it.
+    """
     rng = np.random.default_rng(1)
     start = 0.120 / 1486.0 - 4e-6
     t = start + np.arange(SAMPLES) * INTERVAL_S
     inside = (t > 0.120 / 1486.0) & (t < 0.120 / 1486.0 + 12 / 2.25e6)
     wave = sum(np.sin(2 * np.pi * 2.25e6 * n * t) / n for n in range(1, 13)) * inside
-    counts = np.stack(
-        [12_000 * (wave + 0.01 * rng.standard_normal(SAMPLES)) * (1 - 0.3 * i / WAVEFORMS) for i in range(WAVEFORMS)]
-    )
+    counts = np.stack([12_000 * (wave + 0.01 * rng.standard_normal(SAMPLES)) for _ in range(WAVEFORMS)])
     full = np.full(WAVEFORMS, 1.0)
     poses = np.zeros((WAVEFORMS, 5))
     np.savez(
