@@ -244,10 +244,11 @@ class Conductor:
         captured = monotonic()
         stage = self._i.stage
         # all is asked before any answer is awaited; the stage answers in order, so the position is the old one
-        stage.ask_position()
         scope.ask_samples()
-        if following is not None:
-            self._start(following)
+        with stage.link.together():
+            stage.ask_position()
+            if following is not None:
+                self._start(following)
         after = self._where(stage.read_position())
         if point.index % TEMPERATURE_EVERY == 0:
             self._look_after_temperature(first=point.index == 0)

@@ -8,7 +8,8 @@ from __future__ import annotations
 
 from abc import ABC, abstractmethod
 from collections import deque
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
+from contextlib import contextmanager
 from time import monotonic
 
 from drivers.errors import Cancelled, LinkLost, LinkTimeout
@@ -47,6 +48,7 @@ class Link(ABC):
         self._end = terminator.encode("ascii")
         self._inbox = Inbox()
         self._out_of_step = False
+        self._held: list[bytes] | None = None
 
     # --- what a carrier provides ------------------------------------------------------------------------
 
@@ -103,7 +105,22 @@ class Link(ABC):
         """Send bytes as they are."""
         self._check_in_step()
         self.transcript.add(">", data)
-        self._send(data)
+        if self._held is None:
+            self._send(data)
+        else:
+            self._held.append(data)
+
+    @contextmanager
+    def together(self) -> Iterator[None]:
+        """What is written in this block leaves at once at its end, in order: one packet, one wake-up."""
+        self._held = []
+        try:
+            yield
+            held = b"".join(self._held)
+        finally:
+            self._held = None
+        if held:
+            self._send(held)
 
     def query(self, text: str, timeout_s: float | None = None) -> str:
         """Send a line, return the reply line.

@@ -11,7 +11,6 @@ import os
 import pty
 import selectors
 import socket
-import time
 import tty
 from collections.abc import Callable, Sequence
 from pathlib import Path
@@ -22,7 +21,6 @@ from sim_hardware.conversation import Conversation
 
 RECEIVE = 65_536
 READ = selectors.EVENT_READ
-LINGER_S = 0.0
 Piece = bytes | memoryview
 Ready = list[tuple[selectors.SelectorKey, int]]
 
@@ -76,23 +74,9 @@ class Loop:
     def run(self) -> None:
         """Until `stop`."""
         self._running = True
-        served = False
         while self._running:
-            ready = self._look_again() if served else []
-            if not ready:
-                wait = 0.0 if self._idle() else self._timeline.real_seconds_to_next()
-                ready = self._selector.select(wait)
-            served = bool(ready)
-            self._serve(ready)
-
-    def _look_again(self) -> Ready:
-        """A client that has just been answered asks again soon; to be put to sleep and woken takes longer."""
-        end = time.perf_counter() + LINGER_S
-        while time.perf_counter() < end:
-            ready = self._selector.select(0.0)
-            if ready:
-                return ready
-        return []
+            wait = 0.0 if self._idle() else self._timeline.real_seconds_to_next()
+            self._serve(self._selector.select(wait))
 
     def _serve(self, ready: Ready) -> None:
         for key, events in ready:

@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
+from contextlib import contextmanager
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any, cast
@@ -29,6 +30,10 @@ class FakeLink:
     """In step until told otherwise."""
 
     in_step: bool = True
+
+    @contextmanager
+    def together(self) -> Iterator[None]:
+        yield
 
 
 @dataclass
@@ -148,7 +153,7 @@ def test_the_stage_starts_for_the_next_point_before_the_waveform_is_read(tmp_pat
     conductor, events = conducted(fakes, tmp_path / "s.zarr")
     assert conductor.run()
     at = fakes.log.index("move -10")
-    assert fakes.log[at - 2 : at + 3] == ["ask position", "ask samples", "move -10", "read", "still"]
+    assert fakes.log[at - 2 : at + 3] == ["ask samples", "ask position", "move -10", "read", "still"]
     assert states(events) == ["preparing", "running"]
     assert [round(float(np.degrees(r.commanded[3]))) for r in open_stored(tmp_path / "s.zarr").records] == [
         -20,

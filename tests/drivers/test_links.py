@@ -99,6 +99,13 @@ class LinkSuite:
             assert link.line_ready(5.0)
             assert link.read_line() == "7"
 
+    def test_what_is_written_together_is_answered_in_order(self) -> None:
+        with self.link(Script({b"A?": b"1\n", b"B?": b"2\n"})) as link:
+            with link.together():
+                link.write("A?")
+                link.write("B?")
+            assert [link.read_line(), link.read_line()] == ["1", "2"]
+
     def test_the_transcript_tells_what_passed(self) -> None:
         with self.link(Script({b"A?": b"7\n"})) as link:
             link.query("A?")
