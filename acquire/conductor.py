@@ -6,7 +6,7 @@ while the waveform of this one is transferred and handed to the recorder, which 
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from math import inf
 from pathlib import Path
@@ -36,6 +36,7 @@ from drivers.bench import BenchInstruments
 from drivers.errors import Cancelled, DriverError, LinkError
 from drivers.roles import CaptureSettings
 from drivers.trace import Trace
+from profiles.bench import Bench
 from profiles.model import AXES, LINEAR_AXES, Axis
 from profiles.units import DEG, MM, MS, US
 
@@ -55,6 +56,18 @@ Publish = Callable[[Event | Raw], None]
 
 class Stopped(Exception):
     """The operator broke the scan off."""
+
+
+def plays_of(bench: Bench, axes: Sequence[Axis]) -> dict[Axis, tuple[float, float]]:
+    """Backlash to be taken up and the low end of the travel, of the axes that have any; metres and radians."""
+    found: dict[Axis, tuple[float, float]] = {}
+    for axis in axes:
+        given: Any = getattr(bench.axes, axis)
+        linear = axis in LINEAR_AXES
+        play = given.backlash_mm * MM if linear else given.backlash_deg * DEG
+        if play:
+            found[axis] = (play, given.low_mm * MM if linear else given.low_deg * DEG)
+    return found
 
 
 @dataclass(frozen=True)
@@ -81,6 +94,7 @@ class Conductor:
         self._patience_s = THERMOMETER_S
         self._answer_due = False
         self._source_on = False
+        self._plays = plays_of(job.bench, instruments.stage.axes)
         self._reconnects = 0
         self._there: tuple[PlanPoint, Where] | None = None  # where the stage stands before the first point
         self.done = 0
@@ -304,13 +318,9 @@ class Conductor:
 
     def _approach(self, target: dict[Axis, float]) -> dict[Axis, float] | None:
         """Where to come from so that every axis with backlash arrives upwards; None when there is no such axis."""
-        low = dict(target)
-        for axis in target:
-            given: Any = getattr(self._job.bench.axes, axis)
-            linear = axis in LINEAR_AXES
-            play = given.backlash_mm * MM if linear else given.backlash_deg * DEG
-            floor = given.low_mm * MM if linear else given.low_deg * DEG
-            low[axis] = max(target[axis] - play, floor)
+        if not self._plays:
+            return None
+        low = target | {a: max(target[a] - play, floor) for a, (play, floor) in self._plays.items()}
         return low if low != target else None
 
     def _where(self, position: dict[Axis, float]) -> Where:

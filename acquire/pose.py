@@ -50,11 +50,14 @@ class Pivot:
         cz, sz = np.cos(self.tilt_z), np.sin(self.tilt_z)
         return np.array([-sz * cx, cz * cx, sx])
 
+    @cached_property
+    def centred(self) -> bool:
+        """Whether the element centre is on the axis, so that no turn moves it."""
+        return not any(self.offset)
+
     def swing(self, theta: float, phi: float) -> Vector:
         """What a turn adds to the place of the element centre: R e - e, shape (3,), metres."""
         e = np.array(self.offset)
-        if not e.any():
-            return np.zeros(3)
         cp, sp = np.cos(phi), np.sin(phi)
         rolled = np.array([cp * e[0] - sp * e[1], sp * e[0] + cp * e[1], e[2]])
         # Rodrigues' formula
@@ -64,11 +67,15 @@ class Pivot:
 
     def carriage_for(self, pose: Five) -> Five:
         """Stage coordinates that put the element centre at `pose`."""
+        if self.centred:
+            return pose
         dx, dy, dz = self.swing(pose[3], pose[4])
         return (pose[0] - float(dx), pose[1] - float(dy), pose[2] - float(dz), pose[3], pose[4])
 
     def element_at(self, carriage: Five) -> Five:
         """Pose of the element centre when the stage stands at `carriage`."""
+        if self.centred:
+            return carriage
         dx, dy, dz = self.swing(carriage[3], carriage[4])
         return (
             carriage[0] + float(dx),

@@ -16,7 +16,8 @@ from profiles.instrument import Instrument
 from profiles.model import LINEAR_AXES, Axis
 from profiles.units import DEG, MM
 
-REPORTS_WANTED = 3  # in a row, all alike, before the stage counts as still
+REPORTS_WANTED = 3  # in a row, all alike, before a stage that was seen moving counts as still
+REPORTS_PROMPT = 2
 LONGEST_PAUSE_S = 0.05
 HAIR = 1e-9
 
@@ -71,8 +72,8 @@ class MotionStage(ABC):
         if missing:
             raise OutOfLimits(f"profile {profile.name} has no axis word for {', '.join(missing)}")
         self._words = {a: words[a] for a in self.axes}
-        self._at: dict[Axis, float] = {}
-        self._expected_s = 0.0
+        self._from: dict[Axis, float] = {}
+        self._to: dict[Axis, float] = {}
         self._prompt = False  # the last move was over before it was asked after
 
     # --- what a family provides -------------------------------------------------------------------------
@@ -151,7 +152,7 @@ class MotionStage(ABC):
     def home(self, timeout_s: float, cancelled: StopAsked | None = None) -> None:
         """Reference every axis; afterwards the position is known."""
         self._home(timeout_s, cancelled)
-        self._at = dict(self._report().position)
+        self._to = dict(self._report().position)
 
     def start_move(self, target: Mapping[Axis, float]) -> None:
         """Send a move, metres and radians, and return at once.
@@ -161,9 +162,8 @@ class MotionStage(ABC):
         """
         for axis, value in target.items():
             self._check_limits(axis, value)
-        self._expected_s = self._duration(target)
         self._send_move(target)
-        self._at |= target
+        self._from, self._to = self._to, dict(target)
 
     def finish_move(self, timeout_s: float, cancelled: StopAsked | None = None) -> dict[Axis, float]:
         """Until the stage stands still: done by its own word, and several reports alike. Gives the last one.
@@ -173,12 +173,13 @@ class MotionStage(ABC):
             InstrumentTimeout: it still moves after `timeout_s`.
             Cancelled: the operator asked to stop; the stage is stopped.
         """
-        start, waited = monotonic(), False
+        start, waited, expected_s = monotonic(), False, 0.0
         self._accepted()
         while True:
-            # all reports at once where the stage has been there before it was asked; else one to look
-            self._ask_reports(REPORTS_WANTED if self._prompt else 1)
-            reports = [self._read_report() for _ in range(REPORTS_WANTED if self._prompt else 1)]
+            # where the last move was over before it was asked after, two at once; else one to look
+            count = REPORTS_PROMPT if self._prompt else 1
+            self._ask_reports(count)
+            reports = [self._read_report() for _ in range(count)]
             if reports[0].done and not self._prompt:
                 self._ask_reports(REPORTS_WANTED - 1)
                 reports += [self._read_report() for _ in range(REPORTS_WANTED - 1)]
@@ -186,6 +187,8 @@ class MotionStage(ABC):
                 self._prompt = not waited
                 report = reports[-1]
                 break
+            if not waited:
+                expected_s = self._duration()
             waited, self._prompt = True, False
             gone = monotonic() - start
             if cancelled is not None and cancelled():
@@ -193,7 +196,7 @@ class MotionStage(ABC):
                 raise Cancelled("the move was ended by the operator; the stage was stopped")
             if gone > timeout_s:
                 raise InstrumentTimeout(f"the stage at {self.link.address} still moves after {timeout_s:.3g} s")
-            sleep(min(LONGEST_PAUSE_S, max(0.0, self._expected_s - gone) / 2))
+            sleep(min(LONGEST_PAUSE_S, max(0.0, expected_s - gone) / 2))
         if self.profile.settle_ms:
             sleep(self.profile.settle_ms * 1e-3)
             return self._report().position
@@ -238,11 +241,11 @@ class MotionStage(ABC):
                 f"{travel.high / unit:g} {name}; nothing was moved"
             )
 
-    def _duration(self, target: Mapping[Axis, float]) -> float:
-        """About how long a move takes, from distances, speeds and accelerations."""
+    def _duration(self) -> float:
+        """About how long the move in hand takes, from distances, speeds and accelerations."""
         longest = 0.0
-        for axis, value in target.items():
-            way = abs(value - self._at.get(axis, value))
+        for axis, value in self._to.items():
+            way = abs(value - self._from.get(axis, value))
             t = self.travel[axis]
             ramp = t.speed**2 / t.acceleration
             seconds = way / t.speed + t.speed / t.acceleration if way > ramp else 2 * (way / t.acceleration) ** 0.5

@@ -21,6 +21,7 @@ from drivers.bench import BenchInstruments
 from drivers.errors import LinkTimeout, OutOfLimits
 from drivers.roles import CaptureSettings, Drive
 from drivers.trace import Scaling, Trace
+from profiles.bench import Bench
 from profiles.load import load_bench, load_scan, load_sensor, load_source
 from profiles.scan import Scan
 
@@ -134,10 +135,10 @@ SCAN: dict[str, Any] = {
 }
 
 
-def conducted(fakes: Fakes, store: Path, **changes: Any) -> tuple[Conductor, list[Any]]:
+def conducted(fakes: Fakes, store: Path, bench: Bench | None = None, **changes: Any) -> tuple[Conductor, list[Any]]:
     tables = load_scan("demo-rotation-fast").model_dump(mode="json") | SCAN | changes
     scan = Scan.model_validate(tables)
-    job = Job(load_bench("demo-tank"), load_sensor(scan.sensor), load_source(scan.source), scan)
+    job = Job(bench or load_bench("demo-tank"), load_sensor(scan.sensor), load_source(scan.source), scan)
     one = cast(Any, fakes)
     events: list[Any] = []
     instruments = BenchInstruments(scope=one, stage=one, generator=one, thermometer=None)
@@ -231,13 +232,9 @@ def test_without_a_range_in_the_scan_it_is_found_at_the_reference_point(tmp_path
 
 def test_backlash_is_taken_up_from_below(tmp_path: Path) -> None:
     fakes = Fakes()
-    conductor, _ = conducted(fakes, tmp_path / "s.zarr")
     bench = load_bench("demo-tank")
     theta = cast(Any, bench.axes.theta).model_copy(update={"backlash_deg": 3.0})
-    axes = bench.axes.model_copy(update={"theta": theta})
-    conductor._job = Job(
-        bench.model_copy(update={"axes": axes}), conductor._job.sensor, conductor._job.source, conductor._job.scan
-    )
-    conductor.run()
+    loose = bench.model_copy(update={"axes": bench.axes.model_copy(update={"theta": theta})})
+    conducted(fakes, tmp_path / "s.zarr", loose)[0].run()
     moves = [line for line in fakes.log if line.startswith("move")]
     assert moves[:4] == ["move -23", "move -20", "move -13", "move -10"]
