@@ -47,7 +47,7 @@ from profiles.scan import Scan
 from profiles.sensor import Sensor
 from profiles.source import Source
 
-HISTORY = 50_000
+HISTORY = 5_000  # events kept for clients that missed some or came late
 MOST_EVENTS = 2_000  # in one reply
 QUEUE_MARK = 20_000
 LOOK_MS = 20
