@@ -13,7 +13,7 @@ before, 1 after.
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -26,7 +26,7 @@ TIMING_FLOOR_S = 2e-11  # trigger jitter and sampling clock leave at least this 
 COLUMNS = 4
 WORST_CONDITION = 1e12
 BEND_U = 0.25  # relative, of what the bent wave takes and gives
-SCALE_U = 2e-3  # relative to the whole offset: speed of sound, scale of the rotation axis, slope of the beam
+SCALE_U = 3e-3  # relative to the whole offset: speed of sound, scale of the rotation axis, slope of the beam
 
 
 @dataclass(frozen=True)
@@ -76,6 +76,15 @@ class PivotEstimate:
 def variance_of(sigma_s: float) -> float:
     """Variance of an arrival with that standard uncertainty, s²."""
     return sigma_s**2 + TIMING_FLOOR_S**2
+
+
+def without_face(estimate: PivotEstimate, radius_m: float, wave_radius_m: float) -> PivotEstimate:
+    """The estimate for the centre of a disc and not for what it hears of a bent wave.
+
+    A wave bent with radius R reaches the rim later than the middle; averaged over a disc turned by theta that is
+    a²/(8 R c) (1 + cos²) (derived), which to leading order looks like ez larger by a²/(4 R).
+    """
+    return replace(estimate, z_m=estimate.z_m - radius_m**2 / (4 * wave_radius_m))
 
 
 @dataclass

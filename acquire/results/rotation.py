@@ -13,7 +13,7 @@ from acquire.results.quantity import Quantity
 from checks.directivity import HalfAngle, PlaneResponse, half_angle, plane_responses, seen_from_the_source
 from checks.element import Edge
 from checks.observation import Circumstances, Observation
-from checks.pivot import PivotEstimate, fit_pivot
+from checks.pivot import PivotEstimate, fit_pivot, without_face
 from checks.radius import (
     AngleRadius,
     RadiusFit,
@@ -81,6 +81,8 @@ def _plane_result(
         speed,
         wave_radius(circumstances),
     )
+    if pivot is not None:
+        pivot = without_face(pivot, circumstances.nominal_radius_m, wave_radius(circumstances))
     fits = fit_edges(response, speed, circumstances.nominal_radius_m)
     if pivot is not None:
         uncorrected = {fit.edge: fit for fit in fits}

@@ -20,11 +20,11 @@ from sim_hardware.truth import Echo, ElementTruth, SourceTruth, TankTruth, Truth
 POINTS = 10_000
 ROUNDS = 8
 PER_ROUND = 25
-LIMIT_IN_TRANSFORMS = 25
+LIMIT_IN_TRANSFORMS = 40  # of some 50 us: 500 captures a second
 
 
 @pytest.mark.parametrize("radius_mm", [0.2, 0.5])
-def test_a_capture_costs_less_than_25_transforms_of_its_length(radius_mm: float) -> None:
+def test_a_capture_costs_less_than_40_transforms_of_its_length(radius_mm: float) -> None:
     truth = Truth(
         source=SourceTruth(),
         element=ElementTruth(radius_mm=radius_mm),
