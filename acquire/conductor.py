@@ -102,7 +102,7 @@ class Conductor:
 
     @property
     def source_on(self) -> bool:
-        """As last switched."""
+        """As last switched; True while that is not certain."""
         return self._source_on
 
     def run(self, continue_store: bool = False) -> bool:
@@ -372,6 +372,7 @@ class Conductor:
             return
         if not generator.link.in_step:
             generator.recover()
+        self._source_on = True  # until it is certain that it is off: a switch may work and its reply be lost
         generator.output(on)
         self._source_on = on
 

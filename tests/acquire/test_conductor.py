@@ -215,6 +215,21 @@ def test_an_exception_anywhere_switches_the_source_off(tmp_path: Path) -> None:
     assert not fakes.on
 
 
+def test_a_source_that_went_on_without_saying_so_is_switched_off(tmp_path: Path) -> None:
+    class Mute(Fakes):
+        def output(self, on: bool) -> None:
+            super().output(on)
+            if on:
+                self.link.in_step = False
+                raise LinkTimeout("it went on, but its reply was lost")
+
+    fakes = Mute()
+    with pytest.raises(LinkTimeout, match="its reply was lost"):
+        conducted(fakes, tmp_path / "s.zarr")[0].run()
+    assert fakes.log[-1] == "source off"
+    assert not fakes.on
+
+
 def test_nothing_moves_and_nothing_drives_when_the_plan_is_refused(tmp_path: Path) -> None:
     fakes = Fakes()
     with pytest.raises(PlanRefused, match="z = 500 mm"):
