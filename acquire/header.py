@@ -84,11 +84,6 @@ class StoreHeader:
         """Whether it is of the same scan as these profiles; range and start of the record are found when it runs."""
         return all(_same_scan(getattr(self, key), profiles[key]) for key in ("sensor", "source", "scan"))
 
-    @classmethod
-    def from_attributes(cls, attributes: Mapping[str, Any]) -> StoreHeader:
-        """The header of a store that exists."""
-        return cls(**attributes["profiles"], started_utc=attributes["started_utc"])
-
 
 def _same_scan(one: Mapping[str, Any], other: Mapping[str, Any]) -> bool:
     found_anew = ("full_scale_v", "start_us")

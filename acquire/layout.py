@@ -22,7 +22,6 @@ from checks.observation import Circumstances, Observation
 MOST_POINTS = 64  # in a chunk of counts
 CHUNK_BYTES = 8 << 20  # long records make a chunk of fewer points
 WIDE_CHUNK = 4096  # points in a chunk of everything else
-AXIS_NAMES = ("x", "y", "z", "theta", "phi")
 
 
 @dataclass(frozen=True)

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
-from math import log10
 
 import numpy as np
 from numpy.typing import NDArray
@@ -14,14 +13,13 @@ from checks.averaging import W6_TO_W
 from checks.element import X_6DB
 from checks.errors import MeasurementError
 from checks.observation import Circumstances, Observation
-from checks.wavefront import curvature
+from checks.wavefront import WATER_M_S, curvature
 
 Vector = NDArray[np.float64]
 USABLE_DB = 20.0  # signal over noise at angle zero that a line needs
 REPEATABILITY_FLOOR = 2e-4
 FEWEST_ANGLES = 5
 BEAM_EXPONENT = -0.75
-PISTON_SPEED = 1485.0  # m/s; a beam width need not be known better
 BEAM_KNOWN = 0.3  # relative uncertainty of a correction by exp(x) is so much of x: the width within 15 %
 FARTHEST = 4.0  # (X/w)² beyond which nothing is known of the beam: no larger correction is made
 
@@ -209,7 +207,7 @@ def signal_to_noise_db(seen: Observation) -> Vector:
 
 def beam_w(frequencies_hz: Vector, c: Circumstances) -> Vector:
     """1/e radius of the amplitude across the beam at the element, shape of `frequencies_hz`, m; an estimate."""
-    k = 2 * np.pi * c.drive_hz / PISTON_SPEED
+    k = 2 * np.pi * c.drive_hz / WATER_M_S
     width6 = 2 * X_6DB * c.distance_m / (k * c.source_radius_m) * (frequencies_hz / c.drive_hz) ** BEAM_EXPONENT
     return np.asarray(width6 * W6_TO_W)
 
@@ -232,8 +230,3 @@ def seen_from_the_source(plane: PlaneResponse, x_m: float, z_m: float, c: Circum
     amplitude = plane.amplitude / fallen
     sigma = np.hypot(plane.sigma / fallen, BEAM_KNOWN * off * np.abs(np.nan_to_num(amplitude)))
     return replace(plane, theta=plane.theta - aside * curvature(c), amplitude=amplitude, sigma=sigma)
-
-
-def decibels(ratio: float) -> float:
-    """20 log10 of an amplitude ratio; -inf for zero."""
-    return 20 * log10(abs(ratio)) if ratio else float("-inf")

@@ -6,7 +6,7 @@ from math import inf, pi, tan
 
 from checks.observation import Circumstances
 
-WATER_M_S = 1485.0  # the curvature need not be known better
+WATER_M_S = 1485.0  # curvature and width of a beam need not be known better
 FLAT = 0.05
 STRONGEST = 2.0  # over the distance; between the nulls of a near field the axis tells nothing of the wave beside it
 

@@ -1,4 +1,4 @@
-"""The four roles on a bench, as interfaces. Every adapter of a role passes the same conformance suite.
+"""The four roles on a bench, as interfaces.
 
 All units SI: volts, seconds, hertz, metres, radians, degrees Celsius for temperature. One thread owns an adapter.
 `cancelled` is asked every few tens of milliseconds during a wait; when it says True the wait ends with

@@ -8,7 +8,8 @@ from __future__ import annotations
 
 import re
 
-from drivers.errors import DriverError, InstrumentError, LinkError, ProtocolError, WrongIdentity
+from drivers.errors import DriverError, InstrumentError, ProtocolError
+from drivers.identity import accepted
 from drivers.link import Link
 from profiles.instrument import Instrument
 
@@ -63,12 +64,7 @@ class ScpiInstrument:
 
     def check_identity(self) -> None:
         """Ask who is there, and refuse another."""
-        self.identity = self.link.query(self.profile.identify)
-        if not re.search(self.profile.identity, self.identity):
-            raise WrongIdentity(
-                f"the {self.role} at {self.link.address} says {self.identity!r}; profile {self.profile.name} "
-                f"wants {self.profile.identity!r}: check address and profile"
-            )
+        self.identity = accepted(self.link.query(self.profile.identify), self.link.address, self.profile)
 
     def send(self, action: str, **fields: object) -> None:
         """Send a command of the profile."""
@@ -113,7 +109,3 @@ class ScpiInstrument:
             code, text = entries[0]
             more = f" and {len(entries) - 1} more" if len(entries) > 1 else ""
             raise InstrumentError(f"the {self.role} reports {code}, {text}{more} {when}", code)
-
-    def must_recover(self, error: DriverError) -> bool:
-        """Whether an error of this link is one that `recover` can mend."""
-        return isinstance(error, LinkError) or not self.link.in_step

@@ -2,14 +2,14 @@
 
 from __future__ import annotations
 
-import re
 from abc import ABC, abstractmethod
 from collections.abc import Mapping
 from dataclasses import dataclass
 from time import monotonic, sleep
 from typing import Any
 
-from drivers.errors import Cancelled, DriverError, InstrumentTimeout, OutOfLimits, WrongIdentity
+from drivers.errors import Cancelled, DriverError, InstrumentTimeout, OutOfLimits
+from drivers.identity import accepted
 from drivers.link import Link, StopAsked
 from profiles.bench import AxisTable
 from profiles.instrument import Instrument
@@ -223,12 +223,7 @@ class MotionStage(ABC):
     # --- inside ----------------------------------------------------------------------------------------
 
     def _check_identity(self) -> None:
-        self.identity = self._identify()
-        if not re.search(self.profile.identity, self.identity):
-            raise WrongIdentity(
-                f"the stage at {self.link.address} says {self.identity!r}; profile {self.profile.name} "
-                f"wants {self.profile.identity!r}: check address and profile"
-            )
+        self.identity = accepted(self._identify(), self.link.address, self.profile)
 
     def _check_limits(self, axis: Axis, value: float) -> None:
         travel = self.travel.get(axis)

@@ -6,8 +6,6 @@ from typing import Annotated, Literal
 
 from pydantic import BaseModel, ConfigDict, Field
 
-FORMAT_VERSION = 1
-
 Name = Annotated[str, Field(pattern=r"^[a-z0-9][a-z0-9-]{0,63}$", description="lower case, digits and hyphens")]
 Positive = Annotated[float, Field(gt=0, allow_inf_nan=False)]
 NonNegative = Annotated[float, Field(ge=0, allow_inf_nan=False)]

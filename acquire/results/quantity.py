@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Mapping
 from dataclasses import asdict, dataclass, field
 from math import floor, isfinite, log10
 from typing import Any
@@ -46,12 +46,3 @@ def written(value: float | None, uncertainty: float | None, factor: float = 1.0)
     u = uncertainty * factor
     places = max(0, 1 - floor(log10(u)))
     return f"{value * factor:.{places}f} ± {u:.{places}f}"
-
-
-def select(quantities: Sequence[Quantity], name: str, **conditions: float | str) -> list[Quantity]:
-    """Those of a name whose conditions include the given ones."""
-    return [
-        q
-        for q in quantities
-        if q.name == name and all(q.conditions.get(key) == value for key, value in conditions.items())
-    ]
