@@ -6,12 +6,12 @@ while the waveform of this one is transferred and handed to the recorder, which 
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from collections.abc import Callable
+from functools import partial
 from math import inf
 from pathlib import Path
-from time import monotonic, sleep
-from typing import Any
+from time import monotonic
+from typing import TypeVar
 
 from msgspec import Raw
 
@@ -26,56 +26,35 @@ from acquire.messages import (
     ScanState,
     StateChanged,
 )
-from acquire.plan import AXIS_NUMBER, Plan, PlanPoint
-from acquire.pose import Pivot
+from acquire.mover import Mover, Where
+from acquire.plan import Plan, PlanPoint
 from acquire.prepare import Job, circumstances_of, first_settings, plan_of, resolved
-from acquire.record import Five, PointRecord
+from acquire.record import PointRecord
 from acquire.recorder import Recorder
+from acquire.source_switch import SourceSwitch
+from acquire.travel import check_way
 from drivers.autorange import autorange
 from drivers.bench import BenchInstruments
 from drivers.errors import Cancelled, DriverError, LinkError
 from drivers.roles import CaptureSettings
 from drivers.trace import Trace
-from profiles.bench import Bench
-from profiles.model import AXES, LINEAR_AXES, Axis
-from profiles.units import DEG, MM, MS, US
+from profiles.units import MS, US
 
 HOMING_S = 300.0
-MOVE_S = 120.0
 SLACK_S = 3.0  # beyond the time that the triggers of a capture take
 THERMOMETER_S = 0.05
 TEMPERATURE_EVERY = 5  # points
 PROGRESS_EVERY_S = 0.2
 EVENTS_EVERY_S = 0.01
-RECONNECTS = 3
+RECONNECTS, RECONNECT_PAUSE_S = 3, 2.0
 HOLD_LOOKS_S = 0.05
-SWITCH_OFF_TRIES, SWITCH_OFF_PAUSE_S = 4, 1.0
 
 Publish = Callable[[Event | Raw], None]
+T = TypeVar("T")
 
 
 class Stopped(Exception):
     """The operator broke the scan off."""
-
-
-def plays_of(bench: Bench, axes: Sequence[Axis]) -> dict[Axis, tuple[float, float]]:
-    """Backlash to be taken up and the low end of the travel, of the axes that have any; metres and radians."""
-    found: dict[Axis, tuple[float, float]] = {}
-    for axis in axes:
-        given: Any = getattr(bench.axes, axis)
-        linear = axis in LINEAR_AXES
-        play = given.backlash_mm * MM if linear else given.backlash_deg * DEG
-        if play:
-            found[axis] = (play, given.low_mm * MM if linear else given.low_deg * DEG)
-    return found
-
-
-@dataclass(frozen=True)
-class Where:
-    """A reported position, of the carriage and of the element centre."""
-
-    carriage: Five
-    element: Five
 
 
 class Conductor:
@@ -89,12 +68,13 @@ class Conductor:
         self._control = control
         self._publish = publish
         self._store = store
-        self._pivot: Pivot = job.pivot
+        self._pivot = job.pivot
+        self._mover = Mover(instruments.stage, job.pivot, job.bench)
         self._temperature_c = job.bench.water.temperature_c
         self._patience_s = THERMOMETER_S
         self._answer_due = False
-        self._source_on = False
-        self._plays = plays_of(job.bench, instruments.stage.axes)
+        self._samples_due = False
+        self._source = SourceSwitch(instruments.generator)
         self._reconnects = 0
         self._there: tuple[PlanPoint, Where] | None = None  # where the stage stands before the first point
         self.done = 0
@@ -103,7 +83,7 @@ class Conductor:
     @property
     def source_on(self) -> bool:
         """As last switched; True while that is not certain."""
-        return self._source_on
+        return self._source.may_be_on
 
     def run(self, continue_store: bool = False) -> bool:
         """The whole scan; True when it was sealed, False when the operator broke it off.
@@ -116,8 +96,12 @@ class Conductor:
         self._state("preparing")
         try:
             return self._prepared_run(continue_store)
+        except Cancelled:  # before the first point
+            self._stop_stage()
+            raise
         finally:
-            self._make_sure_it_is_off()
+            self._source.make_sure_it_is_off(self._notice)
+            self._leave_nothing_unanswered()
 
     # --- before the first point -------------------------------------------------------------------------
 
@@ -171,13 +155,13 @@ class Conductor:
     def _go_to_reference(self, plan: Plan) -> None:
         stage = self._i.stage
         if not stage.referenced():
-            self._publish(Notice(text="homing the stage: its position is not known"))
+            self._notice("homing the stage: its position is not known")
             stage.home(HOMING_S, self._control.stop_asked)
         first = plan.points[0]
         if self._job.scan.capture.full_scale_v is None and first.pose != plan.reference:
             first = PlanPoint(-1, plan.reference, reference=True, plane=0)  # where the signal is strongest
-        self._start(first)
-        self._there = (first, self._arrive(first))
+        check_way(self._mover.stand().element, first.pose, self._pivot, self._job.bench)
+        self._there = (first, self._mover.arrive(first.pose, self._control.stop_asked))
 
     def _choose_range(self, wanted: CaptureSettings) -> CaptureSettings:
         """The range of the scan, or the one that the first point asks for."""
@@ -185,12 +169,12 @@ class Conductor:
         if self._job.scan.capture.full_scale_v is not None:
             return scope.configure(wanted)
         chosen = autorange(wanted, scope.full_scales_v(), self._capture)
-        self._publish(Notice(text=f"vertical range {chosen.full_scale_v:g} V, found at the reference point"))
+        self._notice(f"vertical range {chosen.full_scale_v:g} V, found at the reference point")
         return scope.configure(chosen)
 
     def _capture(self, settings: CaptureSettings) -> Trace:
         self._i.scope.configure(settings)
-        self._switch_source(True)
+        self._source.turn(True)
         self._i.scope.arm()
         self._i.scope.wait(self._capture_timeout_s(), self._control.stop_asked)
         return self._i.scope.read()
@@ -203,11 +187,11 @@ class Conductor:
         self._state("running")
         try:
             if points and not self._stands_at(points[0]):
-                self._start(points[0])
+                check_way(self._mover.stand().element, points[0].pose, self._pivot, self._job.bench)
             for at, point in enumerate(points):
                 self._between(recorder)
                 following = points[at + 1] if at + 1 < len(points) else None
-                record, trace = self._point_with_repair(point, following, started)
+                record, trace = self._with_repairs(partial(self._point, point, following, started))
                 if trace.full_scale_v != settings.full_scale_v:
                     raise DriverError("the vertical range changed during the scan: leave the panel alone")
                 recorder.put(record, trace.counts)
@@ -223,50 +207,40 @@ class Conductor:
             self._between(recorder)
         except (Stopped, Cancelled):
             self._state("stopping", self._control.reason)
-            self._i.stage.stop()
-            self._switch_source(False)
+            self._stop_stage()
+            self._source.turn(False)
             self._pass_on(recorder.finish(sealed=False))
             return False
-        self._switch_source(False)
+        self._source.turn(False)
         self._pass_on(recorder.finish(sealed=True))
         self._progress(started, first)
         return True
 
-    def _point_with_repair(
-        self, point: PlanPoint, following: PlanPoint | None, started: float
-    ) -> tuple[PointRecord, Trace]:
-        """One point; a link that failed is made anew and the point taken again, a few times in a scan."""
-        while True:
-            try:
-                return self._point(point, following, started)
-            except LinkError as error:
-                self._reconnects += 1
-                if self._reconnects > RECONNECTS:
-                    raise
-                self._publish(Notice(text=f"{error}; reconnecting, try {self._reconnects} of {RECONNECTS}"))
-                self._repair()
-                self._start(point)
-
     def _point(self, point: PlanPoint, following: PlanPoint | None, started: float) -> tuple[PointRecord, Trace]:
-        before = self._there[1] if self._there and self._stands_at(point) else self._arrive(point)
+        if self._there and self._stands_at(point):
+            before = self._there[1]
+        else:
+            before = self._mover.arrive(point.pose, self._control.stop_asked)
         self._there = None
-        if self._job.scan.capture.dwell_ms:
-            sleep(self._job.scan.capture.dwell_ms * MS)
+        if self._job.scan.capture.dwell_ms and self._control.wait_for_stop(self._job.scan.capture.dwell_ms * MS):
+            raise Stopped
         scope = self._i.scope
         scope.arm()
         scope.wait(self._capture_timeout_s(), self._control.stop_asked)
         captured = monotonic()
         stage = self._i.stage
         # all is asked before any answer is awaited; the stage answers in order, so the position is the old one
+        self._samples_due = True
         scope.ask_samples()
         with stage.link.together():
             stage.ask_position()
             if following is not None:
-                self._start(following)
-        after = self._where(stage.read_position())
+                self._mover.start(following.pose)
+        after = self._mover.where(stage.read_position())
         if point.index % TEMPERATURE_EVERY == 0:
             self._look_after_temperature(first=point.index == 0)
         trace = scope.read_samples()
+        self._samples_due = False
         return self._record(point, before, after, captured - started, trace), trace
 
     def _record(self, point: PlanPoint, before: Where, after: Where, time_s: float, trace: Trace) -> PointRecord:
@@ -294,39 +268,8 @@ class Conductor:
             full_scale_v=trace.full_scale_v,
         )
 
-    # --- moving -----------------------------------------------------------------------------------------
-
-    def _target(self, point: PlanPoint) -> dict[Axis, float]:
-        carriage = self._pivot.carriage_for(point.pose)
-        return {axis: carriage[AXIS_NUMBER[axis]] for axis in self._i.stage.axes}
-
-    def _start(self, point: PlanPoint) -> None:
-        """Send the stage off; where there is backlash to take up, first to a place below the target."""
-        target = self._target(point)
-        self._i.stage.start_move(self._approach(target) or target)
-
     def _stands_at(self, point: PlanPoint) -> bool:
         return self._there is not None and self._there[0] is point
-
-    def _arrive(self, point: PlanPoint) -> Where:
-        stage, target = self._i.stage, self._target(point)
-        position = stage.finish_move(MOVE_S, self._control.stop_asked)
-        if self._approach(target):
-            stage.start_move(target)
-            position = stage.finish_move(MOVE_S, self._control.stop_asked)
-        return self._where(position)
-
-    def _approach(self, target: dict[Axis, float]) -> dict[Axis, float] | None:
-        """Where to come from so that every axis with backlash arrives upwards; None when there is no such axis."""
-        if not self._plays:
-            return None
-        low = target | {a: max(target[a] - play, floor) for a, (play, floor) in self._plays.items()}
-        return low if low != target else None
-
-    def _where(self, position: dict[Axis, float]) -> Where:
-        x, y, z, theta, phi = (position.get(axis, 0.0) for axis in AXES)
-        carriage = (x, y, z, theta, phi)
-        return Where(carriage, self._pivot.element_at(carriage))
 
     # --- beside the points ------------------------------------------------------------------------------
 
@@ -336,13 +279,13 @@ class Conductor:
             raise Stopped
         if not self._control.hold_asked():
             return
-        self._switch_source(False)
+        self._source.turn(False)
         self._state("held", self._control.reason)
         while not self._control.wait_to_go(HOLD_LOOKS_S):
             self._pass_on(recorder.poll())
         if self._control.stop_asked():
             raise Stopped
-        self._switch_source(True)
+        self._with_repairs(partial(self._source.turn, True))
         self._state("running")
 
     def _pass_on(self, events: list[Event | Raw]) -> None:
@@ -360,43 +303,72 @@ class Conductor:
         left = elapsed / taken * (self.planned - self.done) if taken else inf
         self._publish(Progress(done=self.done, planned=self.planned, elapsed_s=elapsed, left_s=left))
 
+    def _notice(self, text: str) -> None:
+        self._publish(Notice(text=text))
+
     def _state(self, state: ScanState, reason: str = "") -> None:
         self._publish(StateChanged(state=state, reason=reason))
 
     def _capture_timeout_s(self) -> float:
         return self._job.scan.capture.averages / self._job.source.repetition_hz * 2 + SLACK_S
 
-    def _switch_source(self, on: bool) -> None:
-        generator = self._i.generator
-        if self._source_on == on:
-            return
-        if not generator.link.in_step:
-            generator.recover()
-        self._source_on = True  # until it is certain that it is off: a switch may work and its reply be lost
-        generator.output(on)
-        self._source_on = on
+    def _stop_stage(self) -> None:
+        self._i.stage.stop()
+        self._mover.forget()
 
-    def _make_sure_it_is_off(self) -> None:
-        """Whatever happened before: an instrument that does not answer is asked again over a new connection."""
-        for attempt in range(SWITCH_OFF_TRIES):
+    def _leave_nothing_unanswered(self) -> None:
+        """A scan that failed may leave a move under way: its answer must not be there for the next one."""
+        if self._i.stage.link.in_step:
             try:
-                self._switch_source(False)
+                self._mover.end_move(self._control.stop_asked)
             except DriverError as error:
-                failure = error
-                self._publish(Notice(text=f"the source does not go off ({error}); trying again"))
-                sleep(attempt * SWITCH_OFF_PAUSE_S)
-            else:
-                return
-        raise DriverError(f"THE SOURCE COULD NOT BE SWITCHED OFF, do it by hand now ({failure})")
+                self._notice(f"the stage did not end its move: {error}")
+
+    # --- links that fail --------------------------------------------------------------------------------
+
+    def _with_repairs(self, action: Callable[[], T]) -> T:
+        """Do something; a link that fails meanwhile is made anew and it is done again, a few times in a scan.
+
+        Raises:
+            LinkError: there were too many failures.
+        """
+        failed = False
+        while True:
+            try:
+                if failed:
+                    self._repair()
+                return action()
+            except LinkError as error:
+                self._reconnects += 1
+                if self._reconnects > RECONNECTS:
+                    raise
+                self._notice(f"{error}; reconnecting, try {self._reconnects} of {RECONNECTS}")
+                failed = True
 
     def _repair(self) -> None:
-        """Make every link that is out of step anew; the source may have gone off with it."""
-        for instrument in (self._i.generator, self._i.scope, self._i.stage, self._i.thermometer):
-            if instrument is not None and not instrument.link.in_step:
-                instrument.recover()
-        self._answer_due = False
-        self._i.generator.output(True)
-        self._source_on = True
+        """Make every link anew that is out of step, or that owes an answer to what was broken off.
+
+        The source is off meanwhile as far as its own link allows, and on again afterwards.
+        """
+        i = self._i
+        if i.generator.link.in_step:
+            self._source.turn(False)
+        if self._control.wait_for_stop((self._reconnects - 1) * RECONNECT_PAUSE_S):
+            raise Stopped
+        if self._samples_due or not i.scope.link.in_step:
+            i.scope.recover()
+            self._samples_due = False
+        if i.thermometer is not None and not i.thermometer.link.in_step:
+            i.thermometer.recover()
+            self._answer_due = False
+        if i.stage.link.in_step:
+            self._mover.end_move(self._control.stop_asked)
+        else:
+            i.stage.recover()
+            self._mover.forget()
+        self._source.turn(True)
+
+    # --- temperature ------------------------------------------------------------------------------------
 
     def _read_temperature(self) -> None:
         if self._i.thermometer is not None:

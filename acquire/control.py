@@ -41,6 +41,10 @@ class Control:
         """For waits that can be ended."""
         return self._stop.is_set()
 
+    def wait_for_stop(self, timeout_s: float) -> bool:
+        """Let some time pass; True at once when the scan is to be broken off."""
+        return self._stop.wait(timeout_s)
+
     def hold_asked(self) -> bool:
         """Looked at after every point."""
         return self._hold.is_set()

@@ -75,6 +75,7 @@ class MotionStage(ABC):
         self._from: dict[Axis, float] = {}
         self._to: dict[Axis, float] = {}
         self._prompt = False  # the last move was over before it was asked after
+        self._unanswered = False  # a move was sent, and whether it was taken has not been read
 
     # --- what a family provides -------------------------------------------------------------------------
 
@@ -109,7 +110,7 @@ class MotionStage(ABC):
 
     @abstractmethod
     def _halt(self) -> None:
-        """Stop every axis at once."""
+        """Stop every axis at once, and take the answer to a move that nobody has read yet."""
 
     @abstractmethod
     def referenced(self) -> bool:
@@ -131,8 +132,9 @@ class MotionStage(ABC):
         try:
             if not self.link.in_step:
                 self.link.reconnect()
-            if not self._report().done:
-                self._halt()
+                self._unanswered = False
+            if self._unanswered or not self._report().done:
+                self.stop()
         except DriverError:
             self.link.transcript.add("!", b"could not be stopped at the end")
         finally:
@@ -145,6 +147,7 @@ class MotionStage(ABC):
             InstrumentTimeout: the controller was restarted and has lost its position.
         """
         self.link.reconnect()
+        self._unanswered = False
         self._check_identity()
         if not self.referenced():
             raise InstrumentTimeout(f"the stage at {self.link.address} has lost its position: home it, then go on")
@@ -163,6 +166,7 @@ class MotionStage(ABC):
         for axis, value in target.items():
             self._check_limits(axis, value)
         self._send_move(target)
+        self._unanswered = True
         self._from, self._to = self._to, dict(target)
 
     def finish_move(self, timeout_s: float, cancelled: StopAsked | None = None) -> dict[Axis, float]:
@@ -174,6 +178,7 @@ class MotionStage(ABC):
             Cancelled: the operator asked to stop; the stage is stopped.
         """
         start, waited, expected_s = monotonic(), False, 0.0
+        self._unanswered = False
         self._accepted()
         while True:
             # where the last move was over before it was asked after, two at once; else one to look
@@ -218,7 +223,9 @@ class MotionStage(ABC):
         """Stop every axis at once."""
         if not self.link.in_step:
             self.link.reconnect()
+            self._unanswered = False
         self._halt()
+        self._unanswered = False
 
     # --- inside ----------------------------------------------------------------------------------------
 

@@ -77,3 +77,5 @@ class PrefixStage(MotionStage):
 
     def _halt(self) -> None:
         self.link.write("ST")
+        if self._unanswered:
+            self.link.read_line()

@@ -148,6 +148,13 @@ def test_a_stop_while_moving_holds_and_resets() -> None:
     assert "b'\\x18'" in told
 
 
+def test_iso_a_stop_takes_the_answer_to_a_move_that_nobody_has_read() -> None:
+    with stage_on(IsoStage, "stage-iso", IsoScript(IDLE)) as stage:
+        stage.start_move({"x": 1.5e-3})
+        stage.stop()
+        assert stage.position()["x"] == pytest.approx(1.5e-3)  # and no stale ok in its place
+
+
 def test_another_controller_is_refused() -> None:
     script = IsoScript(IDLE)
     script.identity = b"[VER:SOMETHING ELSE]\nok\n"
@@ -207,3 +214,23 @@ def test_prefix_homing_goes_on_until_every_axis_is_referenced() -> None:
     with stage_on(PrefixStage, "stage-prefix", script) as stage:
         stage.home(5.0)
     assert b"1OR;4OR" in script.heard
+
+
+def test_prefix_a_stop_takes_the_answer_to_a_move_that_nobody_has_read() -> None:
+    script = PrefixScript()
+    with stage_on(PrefixStage, "stage-prefix", script) as stage:
+        stage.start_move({"x": 1.5e-3})
+        stage.stop()
+        assert stage.position()["x"] == pytest.approx(1.5e-3)
+        stage.stop()  # nothing is owed any more, so nothing is waited for
+        assert stage.referenced()
+    assert script.heard.count(b"ST") == 2
+
+
+@pytest.mark.parametrize("family", ["iso", "prefix"])
+def test_a_stage_is_stopped_on_closing_where_a_move_was_sent_off(family: str) -> None:
+    script = IsoScript(IDLE) if family == "iso" else PrefixScript()
+    kind, name = (IsoStage, "stage-iso") if family == "iso" else (PrefixStage, "stage-prefix")
+    with stage_on(kind, name, script) as stage:
+        stage.start_move({"x": 1.5e-3})
+    assert (b"!" if family == "iso" else b"ST") in b" ".join(script.heard)
