@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import sys
+import traceback
 from collections.abc import Mapping
 from pathlib import Path
 from queue import Empty, SimpleQueue
@@ -74,6 +75,8 @@ class BenchThread(Thread):
                     self._serve_one(instruments)
         except DriverError as error:
             self.failed = str(error)
+        except Exception as error:  # the daemon must not answer on as if it had a bench
+            self.failed = unexpected(error)
         finally:
             self.ready.set()
 
@@ -82,11 +85,11 @@ class BenchThread(Thread):
             job, store, continue_store = self._wanted.get(timeout=LOOK_S)
         except Empty:
             return
-        for instrument in (instruments.generator, instruments.scope, instruments.stage, instruments.thermometer):
-            if instrument is not None and not instrument.link.in_step:
-                instrument.recover()
         self._conductor = Conductor(job, instruments, self.control, self.publish, store)
         try:
+            for instrument in (instruments.generator, instruments.scope, instruments.stage, instruments.thermometer):
+                if instrument is not None and not instrument.link.in_step:
+                    instrument.recover()
             sealed = self._conductor.run(continue_store)
             if sealed:
                 self.publish(StateChanged(state="sealed", reason=f"all points are in {store}"))
@@ -97,9 +100,17 @@ class BenchThread(Thread):
             self.publish(StateChanged(state="broken-off", reason=self.control.reason or "by the operator"))
         except KNOWN as error:
             self.publish(StateChanged(state="failed", reason=str(error)))
+        except Exception as error:  # this scan is over, the source is off; the next one may be tried
+            self.publish(StateChanged(state="failed", reason=unexpected(error)))
 
     def publish(self, event: Event | Raw) -> None:
         """Pass an event on, and remember the state."""
         if isinstance(event, StateChanged):
             self.state = event.state
         self.events.put(event)
+
+
+def unexpected(error: Exception) -> str:
+    """One line for the user; where it happened goes to the daemon's own output."""
+    traceback.print_exception(error)
+    return f"a fault of truepivot itself ({type(error).__name__}: {error}); the daemon's output tells where"

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
+from time import monotonic
 from types import TracebackType
 from typing import Self
 
@@ -37,6 +38,10 @@ class DaemonSilent(Exception):
     """No daemon answers; one line with the cure."""
 
 
+class DaemonReplaced(DaemonSilent):
+    """Another daemon answers where the one was that ran the scan."""
+
+
 class RequestRefused(Exception):
     """The daemon refused; one line or more, with the cure."""
 
@@ -51,6 +56,8 @@ class Client:
         self._events = self._socket(zmq.SUB, events_endpoint(endpoint))
         self._events.setsockopt(zmq.SUBSCRIBE, b"")
         self._next: int | None = None
+        self._daemon: str | None = None
+        self._asked = 0
 
     def _socket(self, kind: int, endpoint: str) -> zmq.Socket[bytes]:
         socket = self._context.socket(kind)
@@ -77,10 +84,19 @@ class Client:
             DaemonSilent: nobody answers.
             RequestRefused: the daemon refused.
         """
-        self._requests.send_multipart([b"", encode(RequestEnvelope(body=request))])
-        if not self._requests.poll(int(timeout_s * 1e3)):
-            raise DaemonSilent(f"no daemon answers at {self.endpoint}; start one with: truepivot serve BENCH")
-        reply = decode_reply(self._requests.recv_multipart()[-1]).body
+        self._asked += 1
+        self._requests.send_multipart([b"", encode(RequestEnvelope(number=self._asked, body=request))])
+        deadline = monotonic() + timeout_s
+        reply: Reply | None = None
+        while reply is None:
+            if not self._requests.poll(max(0, int((deadline - monotonic()) * 1e3))):
+                raise DaemonSilent(f"no daemon answers at {self.endpoint}; start one with: truepivot serve BENCH")
+            try:
+                envelope = decode_reply(self._requests.recv_multipart()[-1])
+            except msgspec.MsgspecError as error:
+                raise self._stranger() from error
+            # the reply to a request whose waiting was broken off answers nothing else
+            reply = envelope.body if envelope.number in (0, self._asked) else None
         if isinstance(reply, Refused):
             raise RequestRefused(reply.text)
         return reply
@@ -94,7 +110,8 @@ class Client:
         """How things stand."""
         reply = self.ask(GetStatus())
         if not isinstance(reply, Status):
-            raise DaemonSilent(f"what answers at {self.endpoint} is no daemon of this version")
+            raise self._stranger()
+        self._still(reply.daemon)
         return reply
 
     def follow_from(self, number: int) -> None:
@@ -107,8 +124,9 @@ class Client:
         Raises:
             DaemonSilent: the daemon is gone.
         """
+        status = self.status()
         if self._next is None:
-            self._next = self.status().last_event + 1
+            self._next = status.last_event + 1
         yield from self._missed()
         while True:
             if not self._events.poll(LOOK_MS):
@@ -116,7 +134,11 @@ class Client:
                     yield from self._missed()
                 yield None
                 continue
-            envelope = decode_event(self._events.recv())
+            try:
+                envelope = decode_event(self._events.recv())
+            except msgspec.MsgspecError as error:
+                raise self._stranger() from error
+            self._still(envelope.daemon)
             if envelope.number > self._next:
                 yield from self._missed()
             if envelope.number == self._next:
@@ -130,6 +152,23 @@ class Client:
             if not isinstance(reply, Events) or not reply.events:
                 return
             for envelope in reply.events:
+                self._still(envelope.daemon)
                 if envelope.number >= (self._next or 1):
                     self._next = envelope.number + 1
                     yield envelope.body
+
+    def _stranger(self) -> DaemonSilent:
+        return DaemonSilent(f"what answers at {self.endpoint} is no daemon of this version")
+
+    def _still(self, daemon: str) -> None:
+        """Whether it is the same daemon as before: another one knows nothing of the scan that is followed.
+
+        Raises:
+            DaemonReplaced: it is not.
+        """
+        if self._daemon not in (None, daemon):
+            raise DaemonReplaced(
+                f"the daemon at {self.endpoint} was started anew, so its scan is broken off; what was stored stays, "
+                "go on with: truepivot run --continue STORE"
+            )
+        self._daemon = daemon

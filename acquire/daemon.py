@@ -2,20 +2,20 @@
 
 from __future__ import annotations
 
-import fcntl
 import signal
-from collections import deque
 from collections.abc import Callable, Iterator
-from contextlib import contextmanager
+from contextlib import ExitStack, contextmanager
 from pathlib import Path
 from queue import Empty
 from types import FrameType
+from uuid import uuid4
 
 import msgspec
 import zmq
 
 from acquire.bench_thread import BenchThread
-from acquire.endpoint import NoEndpoint, checked, events_endpoint
+from acquire.endpoint import NoEndpoint, checked, events_endpoint, lock_of, runtime_folder
+from acquire.history import History
 from acquire.messages import (
     PROTOCOL_VERSION,
     Done,
@@ -36,6 +36,7 @@ from acquire.messages import (
     Status,
     Stop,
 )
+from acquire.ownership import OwnedByAnother, held, held_instruments
 from acquire.prepare import Job
 from profiles.bench import Bench
 from profiles.errors import ProfileError
@@ -47,7 +48,6 @@ from profiles.scan import Scan
 from profiles.sensor import Sensor
 from profiles.source import Source
 
-HISTORY = 5_000  # events kept for clients that missed some or came late
 MOST_EVENTS = 2_000  # in one reply
 QUEUE_MARK = 20_000
 LOOK_MS = 20
@@ -59,6 +59,7 @@ class Numbered(msgspec.Struct, frozen=True, kw_only=True):
     """An `EventEnvelope` as it is sent: events of the recorder arrive encoded and stay so."""
 
     version: int = PROTOCOL_VERSION
+    daemon: str
     number: int
     body: Event | msgspec.Raw
 
@@ -74,15 +75,14 @@ class Daemon:
         self._bench = bench
         self._scope = scope
         self._thread = thread
-        self._history: deque[bytes] = deque(maxlen=HISTORY)
-        self._number = 0
+        self._history = History()
+        self._me = uuid4().hex  # so that a client sees when another daemon has taken this one's place
         self.ended = False
 
     def numbered(self, event: Event | msgspec.Raw) -> bytes:
         """The event with the next number, encoded, and kept for clients that missed it."""
-        self._number += 1
-        data = encode(Numbered(number=self._number, body=event))
-        self._history.append(data)
+        data = encode(Numbered(daemon=self._me, number=self._history.newest + 1, body=event))
+        self._history.add(event, data)
         return data
 
     def answer(self, request: Request) -> Reply:
@@ -140,16 +140,15 @@ class Daemon:
             store=str(store) if store else None,
             done=done,
             planned=planned,
-            last_event=self._number,
+            daemon=self._me,
+            last_event=self._history.newest,
             source_on=source_on,
             identities=self._thread.identities,
         )
 
     def _events(self, since: int) -> Events:
-        oldest = self._number - len(self._history) + 1
-        start = max(0, since - oldest)
-        kept = [self._history[i] for i in range(start, min(start + MOST_EVENTS, len(self._history)))]
-        return Events(oldest=oldest, events=[decode_event(data) for data in kept])
+        kept = self._history.since(since, MOST_EVENTS)
+        return Events(oldest=self._history.oldest, events=[decode_event(data) for data in kept])
 
 
 encode = msgspec.msgpack.Encoder().encode
@@ -157,15 +156,17 @@ decode_request = msgspec.msgpack.Decoder(RequestEnvelope).decode
 decode_event = msgspec.msgpack.Decoder(EventEnvelope).decode
 
 
-def decoded(frame: bytes) -> Request | Refused:
-    """The request in a frame, or why there is none."""
+def answered(daemon: Daemon, frame: bytes) -> bytes:
+    """What goes back for a frame that came; one that is no request of this version is told so."""
     try:
-        envelope = decode_request(frame)
+        request = decode_request(frame)
     except msgspec.MsgspecError as error:
-        return Refused(text=f"the request was not understood ({error}): are client and daemon of one version?")
-    if envelope.version != PROTOCOL_VERSION:
-        return Refused(text=f"the client speaks version {envelope.version}, the daemon {PROTOCOL_VERSION}: update")
-    return envelope.body
+        text = f"the request was not understood ({error}): are client and daemon of one version?"
+        return encode(ReplyEnvelope(body=Refused(text=text)))
+    if request.version != PROTOCOL_VERSION:
+        text = f"the client speaks version {request.version}, the daemon {PROTOCOL_VERSION}: update"
+        return encode(ReplyEnvelope(number=request.number, body=Refused(text=text)))
+    return encode(ReplyEnvelope(number=request.number, body=daemon.answer(request.body)))
 
 
 def serve(bench: Bench, endpoint: str, ready: Callable[[dict[str, str]], None]) -> None:
@@ -177,7 +178,7 @@ def serve(bench: Bench, endpoint: str, ready: Callable[[dict[str, str]], None]) 
         NoEndpoint: the endpoint cannot be used, or another daemon has it.
     """
     profiles = instruments_of(bench)
-    with sole_owner(checked(endpoint)), sockets(endpoint) as (requests, events), ending_signals() as signalled:
+    with sole_owner(bench, checked(endpoint)), sockets(endpoint) as (requests, events), ending_signals() as signalled:
         thread = BenchThread(bench, profiles)
         daemon = Daemon(bench, thread, profiles["oscilloscope"])
         thread.start()
@@ -202,9 +203,7 @@ def listen(daemon: Daemon, thread: BenchThread, requests: zmq.Socket[bytes], eve
     if not requests.poll(LOOK_MS):
         return
     parts = requests.recv_multipart()
-    request = decoded(parts[-1])
-    reply = request if isinstance(request, Refused) else daemon.answer(request)
-    requests.send_multipart([*parts[:-1], encode(ReplyEnvelope(body=reply))])
+    requests.send_multipart([*parts[:-1], answered(daemon, parts[-1])])
 
 
 def send_events(daemon: Daemon, thread: BenchThread, events: zmq.Socket[bytes]) -> None:
@@ -242,19 +241,26 @@ def sockets(endpoint: str) -> Iterator[tuple[zmq.Socket[bytes], zmq.Socket[bytes
 
 
 @contextmanager
-def sole_owner(endpoint: str) -> Iterator[None]:
-    """Refuse a second daemon at the same local endpoint: binding would silently take it over."""
-    if not endpoint.startswith("ipc://"):
-        yield
-        return
-    lock = Path(endpoint.removeprefix("ipc://") + ".lock")
-    with lock.open("w") as file:
+def sole_owner(bench: Bench, endpoint: str) -> Iterator[None]:
+    """Refuse a second daemon at the same endpoint, where binding would silently take it over, or on the same bench.
+
+    Raises:
+        NoEndpoint: another daemon answers there.
+        BenchUnusable: another daemon has one of the instruments.
+    """
+    owner = f"the daemon at {endpoint}"
+    addresses = [attached.address for attached in bench.instruments.values()]
+    with ExitStack() as stack:
         try:
-            fcntl.flock(file, fcntl.LOCK_EX | fcntl.LOCK_NB)
-        except OSError as error:
+            if lock := lock_of(endpoint):
+                stack.enter_context(held(lock, f"the endpoint {endpoint}", owner))
+        except OwnedByAnother as error:
             raise NoEndpoint(f"a daemon answers at {endpoint} already") from error
+        try:
+            stack.enter_context(held_instruments(addresses, runtime_folder(), owner))
+        except OwnedByAnother as error:
+            raise BenchUnusable(str(error)) from error
         yield
-        lock.unlink(missing_ok=True)
 
 
 @contextmanager

@@ -8,6 +8,8 @@ from urllib.parse import SplitResult, urlsplit
 
 from platformdirs import user_runtime_path
 
+from acquire.ownership import is_held
+
 LONGEST_PATH = 90  # a local socket's path must fit into some 100 bytes
 LOOPBACK = ("127.0.0.1", "localhost", "::1")
 
@@ -35,6 +37,11 @@ def events_endpoint(endpoint: str) -> str:
         return endpoint + "-events"
     host, _, port = endpoint.rpartition(":")
     return f"{host}:{int(port) + 1}"
+
+
+def lock_of(endpoint: str) -> Path | None:
+    """The file that the daemon at a local socket holds; a port on this machine needs none."""
+    return Path(endpoint.removeprefix("ipc://") + ".lock") if endpoint.startswith("ipc://") else None
 
 
 def checked(endpoint: str) -> str:
@@ -66,12 +73,13 @@ def _has_port(parts: SplitResult) -> bool:
 
 
 def only_endpoint() -> str:
-    """The one daemon's that runs here.
+    """The one daemon's that runs here; a socket that a killed one left behind does not count.
 
     Raises:
         NoEndpoint: there is none, or more than one.
     """
-    found = sorted(runtime_folder().glob("*.socket"))
+    sockets = sorted(runtime_folder().glob("*.socket"))
+    found = [socket for socket in sockets if is_held(socket.with_name(socket.name + ".lock"))]
     if not found:
         raise NoEndpoint("no daemon runs here; start one with: truepivot serve BENCH")
     if len(found) > 1:

@@ -10,7 +10,7 @@ from typing import Any, Literal
 
 import msgspec
 
-PROTOCOL_VERSION = 1
+PROTOCOL_VERSION = 2
 
 ScanState = Literal["idle", "preparing", "running", "held", "stopping", "sealed", "broken-off", "failed"]
 
@@ -62,9 +62,10 @@ Request = RunScan | Hold | Resume | Stop | GetStatus | GetEvents | Shutdown
 
 
 class RequestEnvelope(msgspec.Struct, frozen=True, kw_only=True):
-    """What crosses the wire from a client."""
+    """What crosses the wire from a client; the reply carries the same number."""
 
     version: int = PROTOCOL_VERSION
+    number: int = 0
     body: Request
 
 
@@ -153,9 +154,10 @@ Event = ScanStarted | StateChanged | PointsStored | PointSeen | WaveformSeen | F
 
 
 class EventEnvelope(msgspec.Struct, frozen=True, kw_only=True):
-    """An event with its number, counted from 1 since the daemon started."""
+    """An event with its number, counted from 1 since that daemon started."""
 
     version: int = PROTOCOL_VERSION
+    daemon: str
     number: int
     body: Event
 
@@ -184,13 +186,14 @@ class Status(Message, frozen=True, kw_only=True, tag="status-reply"):
     store: str | None
     done: int
     planned: int
+    daemon: str
     last_event: int
     source_on: bool
     identities: dict[str, str]
 
 
 class Events(Message, frozen=True, kw_only=True, tag="events-reply"):
-    """Past events; `oldest` is the first number still kept."""
+    """Past events. From number `oldest` on all are kept; of those before, the ones that still matter."""
 
     oldest: int
     events: list[EventEnvelope]
@@ -200,7 +203,8 @@ Reply = Done | Refused | Status | Events
 
 
 class ReplyEnvelope(msgspec.Struct, frozen=True, kw_only=True):
-    """What crosses the wire to a client."""
+    """What crosses the wire to a client: the reply to its request of that number."""
 
     version: int = PROTOCOL_VERSION
+    number: int = 0
     body: Reply
