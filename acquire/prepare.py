@@ -12,7 +12,7 @@ from acquire.travel import PlanRefused, check_travel
 from checks.comb import comb_lines, side_lines
 from checks.gate import plan_gate
 from checks.observation import Circumstances
-from checks.water import speed_of_sound
+from checks.water import speed_of_sound, speed_u
 from drivers.roles import CaptureSettings, Drive
 from profiles.bench import Bench
 from profiles.fitting import misfits
@@ -139,4 +139,5 @@ def circumstances_of(job: Job, plan: Plan, temperature_c: float, interval_s: flo
         pivot_z_m=scan.pivot.z_mm * MM,
         linear_tolerance_m=LINEAR_TOLERANCE_M,
         angular_tolerance_rad=ANGULAR_TOLERANCE_RAD,
+        speed_u=speed_u(temperature_c, job.bench.water.temperature_u_c),
     )

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -13,15 +13,14 @@ from checks.averaging import W6_TO_W
 from checks.element import X_6DB
 from checks.errors import MeasurementError
 from checks.observation import Circumstances, Observation
-from checks.wavefront import WATER_M_S, curvature
+from checks.wavefront import WATER_M_S
 
 Vector = NDArray[np.float64]
+Complex = NDArray[np.complex128]
 USABLE_DB = 20.0  # signal over noise at angle zero that a line needs
 REPEATABILITY_FLOOR = 2e-4
 FEWEST_ANGLES = 5
 BEAM_EXPONENT = -0.75
-BEAM_KNOWN = 0.3  # relative uncertainty of a correction by exp(x) is so much of x: the width within 15 %
-FARTHEST = 4.0  # (X/w)² beyond which nothing is known of the beam: no larger correction is made
 
 
 @dataclass(frozen=True)
@@ -36,6 +35,8 @@ class PlaneResponse:
         repeatability: relative standard deviation of the revisits at the drive frequency.
         arrival_s, arrival_sigma_s, order: shape (n,).
         peak_v, trough_v: shape (n,); reference_peak_v, reference_trough_v: at angle zero.
+        components: shape (n, K), as observed; noise_v: shape (n, K), of each part; phase: shape (K,), rad, of the
+            components at angle zero once they are turned by the arrival.
     """
 
     plane: int
@@ -56,11 +57,22 @@ class PlaneResponse:
     trough_v: Vector
     reference_peak_v: float
     reference_trough_v: float
+    components: Complex
+    noise_v: Vector
+    phase: Vector
 
     def level_db(self) -> Vector:
         """Level relative to angle zero, shape (n, K), noise bias removed; -inf where nothing is left."""
         with np.errstate(divide="ignore", invalid="ignore"):
             return np.asarray(20 * np.log10(np.abs(self.amplitude / self.reference)))
+
+    def retimed(self, arrival_s: Vector) -> PlaneResponse:
+        """The same with other arrivals, shape (n,), believed everywhere: also where no arrival could be read."""
+        turn = np.exp(1j * (2 * np.pi * np.outer(arrival_s, self.frequencies_hz) - self.phase))
+        amplitude = (self.components * turn).real
+        sigma = np.hypot(self.noise_v, self.repeatability * np.abs(amplitude))
+        everywhere = np.ones(arrival_s.size, np.bool_)
+        return replace(self, amplitude=amplitude, sigma=sigma, arrival_s=arrival_s, arrival_usable=everywhere)
 
 
 def plane_responses(seen: Sequence[Observation], circumstances: Circumstances) -> list[PlaneResponse]:
@@ -125,17 +137,24 @@ def _plane(pairs: list, circumstances: Circumstances) -> PlaneResponse:  # type:
         trough_v=peaks[up, 1],
         reference_peak_v=float(peaks[near_zero, 0].mean()),
         reference_trough_v=float(peaks[near_zero, 1].mean()),
+        components=components[up],
+        noise_v=noise[up],
+        phase=np.angle(mean),
     )
 
 
 @dataclass(frozen=True)
 class HalfAngle:
-    """Where a level is reached on either side, rad, with standard uncertainties; None where it never is."""
+    """Where a level is reached on either side, rad, with standard uncertainties; None where it never is.
+
+    `shared_u` is the part that moves both sides outwards or inwards together, apart from that of each.
+    """
 
     left: float | None
     right: float | None
     left_u: float = 0.0
     right_u: float = 0.0
+    shared_u: float = 0.0
 
     @property
     def half_width(self) -> float | None:
@@ -145,7 +164,30 @@ class HalfAngle:
     @property
     def half_width_u(self) -> float:
         """Standard uncertainty of the half width."""
-        return float(np.hypot(self.left_u, self.right_u)) / 2
+        return float(np.hypot(np.hypot(self.left_u, self.right_u) / 2, self.shared_u))
+
+    def moved(self, zero: float) -> HalfAngle:
+        """From true angles to those of a stage that reads `zero` at normal incidence."""
+        left, right = (None if a is None else a + zero for a in (self.left, self.right))
+        return replace(self, left=left, right=right)
+
+    def less_sure(self, reference_u: float, level_db: float, pattern: Pattern, zero: float) -> HalfAngle:
+        """With the relative standard uncertainty of the level at normal incidence, which both sides share."""
+        wanted, step = 10 ** (level_db / 20), 1e-5
+
+        def shared(at: float | None) -> float:
+            if at is None:
+                return 0.0
+            here, there = pattern(np.array([at - zero - step, at - zero + step]))
+            return reference_u * wanted * 2 * step / max(abs(float(there - here)), 1e-12)
+
+        return replace(self, shared_u=(shared(self.left) + shared(self.right)) / 2)
+
+    def in_doubt(self, radius_u: float) -> HalfAngle:
+        """With a relative standard uncertainty of what the angles say of the radius: k a sin(angle) is fixed."""
+        if self.half_width is None:
+            return self
+        return replace(self, shared_u=float(np.hypot(self.shared_u, radius_u * np.tan(self.half_width))))
 
     @property
     def middle(self) -> float | None:
@@ -153,49 +195,84 @@ class HalfAngle:
         return None if self.left is None or self.right is None else (self.right + self.left) / 2
 
 
-def half_angle(plane: PlaneResponse, line: int, level_db: float) -> HalfAngle:
-    """First crossing of a level on each side of angle zero at one frequency, by a monotone cubic.
+Pattern = Callable[[Vector], Vector]  # true angle, rad, to the response over that at normal incidence
 
-    The level counts from normal incidence. Where the stage's zero is off by m, the reference lies below that by
-    about level (m/h)² for a half-width h (the main lobe is nearly a parabola in dB; derived), which is put right.
+
+def half_angle(
+    plane: PlaneResponse, line: int, level_db: float, pattern: Pattern | None = None, zero: float = 0.0
+) -> HalfAngle:
+    """First crossing of a level on each side of angle zero at one frequency.
+
+    The level counts from normal incidence, which the stage reads as `zero`. Between the points the response goes along
+    `pattern`, the departure of the data from it along straight lines: so a step that is coarse for this frequency
+    costs little. Without a pattern it goes along a cubic spline.
     """
+    theta, ratio, sigma = _averaged(plane, line)
+    if pattern is None:
+        from scipy.interpolate import CubicSpline
+
+        normal = float(CubicSpline(theta, ratio)(zero))
+        return HalfAngle(*_both(theta - zero, ratio / normal, sigma / normal, level_db, None)).moved(zero)
+    at_stage_zero = float(pattern(np.array([-zero]))[0])
+    share = plane.reference_sigma[line] / abs(plane.reference[line])
+    found = _both(theta - zero, ratio * at_stage_zero, sigma, level_db, pattern)
+    return HalfAngle(*found).moved(zero).less_sure(share, level_db, pattern, zero)
+
+
+def _averaged(plane: PlaneResponse, line: int) -> tuple[Vector, Vector, Vector]:
+    """Angles once each, ratio to the reference and its standard uncertainty; repeats averaged."""
     ratio = plane.amplitude[:, line] / plane.reference[line]
     sigma = plane.sigma[:, line] / abs(plane.reference[line])
     rows = np.isfinite(ratio)
-    theta, first = np.unique(np.round(plane.theta[rows], 9), return_index=True)
-    means = np.array([ratio[rows][np.abs(plane.theta[rows] - t) < 1e-8].mean() for t in theta])
-    spread = sigma[rows][first]
-    half = _both(theta, means, spread, level_db)
-    if half.middle is None or not half.half_width:
-        return half
-    off = min(0.5, (half.middle / half.half_width) ** 2)
-    return _both(theta, means, spread, level_db * (1 - off))
+    theta, place, count = np.unique(np.round(plane.theta[rows], 8), return_inverse=True, return_counts=True)
+    mean = np.bincount(place, ratio[rows]) / count
+    spread = np.sqrt(np.bincount(place, sigma[rows] ** 2)) / count
+    return theta, mean, spread
 
 
-def _both(theta: Vector, ratio: Vector, sigma: Vector, level_db: float) -> HalfAngle:
-    right, right_u = _crossing(theta, ratio, sigma, level_db)
-    left, left_u = _crossing(-theta[::-1], ratio[::-1], sigma[::-1], level_db)
-    return HalfAngle(None if left is None else -left, right, left_u, right_u)
+def _both(
+    theta: Vector, ratio: Vector, sigma: Vector, level_db: float, pattern: Pattern | None
+) -> tuple[float | None, float | None, float, float]:
+    """Left and right crossing and their uncertainties, from true angles."""
+    right, right_u = _crossing(theta, ratio, sigma, level_db, pattern)
+    left, left_u = _crossing(-theta[::-1], ratio[::-1], sigma[::-1], level_db, pattern)
+    return None if left is None else -left, right, left_u, right_u
 
 
-def _crossing(theta: Vector, ratio: Vector, sigma: Vector, level_db: float) -> tuple[float | None, float]:
+def _crossing(
+    theta: Vector, ratio: Vector, sigma: Vector, level_db: float, pattern: Pattern | None
+) -> tuple[float | None, float]:
     """Smallest positive angle at which the ratio falls through the level, and its uncertainty."""
-    from scipy.interpolate import PchipInterpolator
+    from scipy.interpolate import CubicSpline
 
     wanted = 10 ** (level_db / 20)
-    side = np.nonzero(theta >= -1e-9)[0]
-    below = [i for i in side if ratio[i] < wanted]
-    if not below or below[0] == 0 or below[0] == side[0]:
+    along: Pattern = pattern or CubicSpline(theta, ratio)
+    root = _first_root(lambda at: along(at) - wanted, theta)
+    if root is None:
         return None, 0.0
-    i = below[0]
-    around = slice(max(0, i - 4), i + 4)
-    curve = PchipInterpolator(theta[around], ratio[around] - wanted)
-    roots = [r for r in curve.roots(extrapolate=False) if theta[i - 1] - 1e-12 <= r <= theta[i] + 1e-12]
-    if not roots:
-        return None, 0.0
-    slope = abs(float(curve.derivative()(roots[0])))
-    # the crossing leans on the two points around it and on the reference
-    return float(roots[0]), float(np.hypot(sigma[i], sigma[i - 1])) / np.sqrt(2) / max(slope, 1e-12)
+    step = 1e-4
+    here, there = along(np.array([root - step, root + step]))
+    slope = min((float(there) - float(here)) / (2 * step), -1e-9)
+    moved = 0.0
+    if pattern is not None:
+        # a pattern tells without noise where to look; the data beside that place tell how far off it is
+        moved = -float(np.interp(root, theta, ratio - pattern(theta))) / slope
+    i = int(np.clip(np.searchsorted(theta, root), 1, theta.size - 1))
+    share = (root - theta[i - 1]) / (theta[i] - theta[i - 1])
+    return root + moved, float(np.hypot((1 - share) * sigma[i - 1], share * sigma[i])) / -slope
+
+
+def _first_root(excess: Pattern, theta: Vector) -> float | None:
+    """Smallest positive angle, within the angles measured, at which `excess` falls through zero."""
+    from scipy.optimize import brentq
+
+    fine = np.linspace(0.0, float(theta[-1]), 16 * theta.size)
+    value = excess(fine)
+    fallen = np.nonzero((value[:-1] > 0) & (value[1:] <= 0))[0]
+    if value[0] <= 0 or not fallen.size:
+        return None
+    i = int(fallen[0])
+    return float(brentq(lambda at: float(excess(np.array([at]))[0]), fine[i], fine[i + 1]))
 
 
 def signal_to_noise_db(seen: Observation) -> Vector:
@@ -210,23 +287,3 @@ def beam_w(frequencies_hz: Vector, c: Circumstances) -> Vector:
     k = 2 * np.pi * c.drive_hz / WATER_M_S
     width6 = 2 * X_6DB * c.distance_m / (k * c.source_radius_m) * (frequencies_hz / c.drive_hz) ** BEAM_EXPONENT
     return np.asarray(width6 * W6_TO_W)
-
-
-def seen_from_the_source(plane: PlaneResponse, x_m: float, z_m: float, c: Circumstances) -> PlaneResponse:
-    """The plane as it would be with the element centre on the axis of rotation, for a known pivot offset.
-
-    The turn carries the element sideways by X = ex (cos - 1) + ez sin. So the wave, bent with radius R
-    (`checks.wavefront`), meets it under an angle smaller by X/R, and it stands off the middle of the beam, whose
-    level falls by exp(-X²/w²). It also goes along the beam by Z = ez (cos - 1) - ex sin, and the wave spreads as
-    L/(L + Z). The width is that of a piston's far field, 2 x 2.21 L/(k a), and harmonic n is narrower by n^-3/4,
-    between the quasi-linear n^-1/2 and the linear n^-1 (derived; `checks.pivot` has the convention). How well the
-    width is known goes into `sigma`, so that points far down the side of the beam lose their weight.
-    """
-    aside = x_m * (np.cos(plane.theta) - 1) + z_m * np.sin(plane.theta)
-    along = z_m * (np.cos(plane.theta) - 1) - x_m * np.sin(plane.theta)
-    spread = c.distance_m / (c.distance_m + along)
-    off = np.minimum((aside[:, None] / beam_w(plane.frequencies_hz, c)) ** 2, FARTHEST)
-    fallen = np.exp(-off) * spread[:, None]
-    amplitude = plane.amplitude / fallen
-    sigma = np.hypot(plane.sigma / fallen, BEAM_KNOWN * off * np.abs(np.nan_to_num(amplitude)))
-    return replace(plane, theta=plane.theta - aside * curvature(c), amplitude=amplitude, sigma=sigma)

@@ -41,6 +41,7 @@ class Circumstances:
             drive frequency and multiples of it follow.
         side_lines_hz: shape (2,), two lines within the main lobe about the drive frequency, for group delay.
         pivot_x_m, pivot_z_m: the pivot correction that was applied while scanning (zero: none).
+        speed_u: relative standard uncertainty of the speed of sound, from that of the temperature.
     """
 
     scan_type: ScanType
@@ -63,6 +64,7 @@ class Circumstances:
     pivot_z_m: float = 0.0
     linear_tolerance_m: float = 5e-6
     angular_tolerance_rad: float = 2e-4
+    speed_u: float = 2e-4
 
 
 @dataclass(frozen=True)

@@ -13,7 +13,9 @@ before, 1 after.
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field, replace
+from collections.abc import Callable
+from dataclasses import dataclass, field
+from math import inf
 
 import numpy as np
 from numpy.typing import NDArray
@@ -38,6 +40,7 @@ class PivotEstimate:
         step_s, step_u_s: the step and its standard uncertainty, None and 0 where none is in the model.
         coefficients, coefficient_covariance: shapes (J,) and (J, J), of the plain linear fit, before the
             curvature of the wave is put in; in the order of `PivotFit.row`, and then the step.
+        order_scale: points planned, as in `PivotFit`.
     """
 
     x_m: float
@@ -49,6 +52,7 @@ class PivotEstimate:
     points: int
     coefficients: Vector
     coefficient_covariance: Vector
+    order_scale: int
     step_s: float | None = None
     step_u_s: float = 0.0
 
@@ -68,6 +72,10 @@ class PivotEstimate:
         spread = float(row @ self.coefficient_covariance @ row) + self.residual_sd_s**2
         return shift + float(row @ self.coefficients), float(np.sqrt(spread))
 
+    def place(self, order: NDArray[np.intp]) -> Vector:
+        """The drift's column for places in the order of visiting, shape of `order`."""
+        return np.asarray(order / max(self.order_scale, 1) - 0.5)
+
     def arrival_at(self, theta: Vector, speed_m_s: float) -> Vector:
         """Arrival relative to that at angle zero, seconds, shape of `theta`."""
         return np.asarray((self.z_m * (np.cos(theta) - 1) - self.x_m * np.sin(theta)) / speed_m_s)
@@ -78,21 +86,13 @@ def variance_of(sigma_s: float) -> float:
     return sigma_s**2 + TIMING_FLOOR_S**2
 
 
-def without_face(estimate: PivotEstimate, radius_m: float, wave_radius_m: float) -> PivotEstimate:
-    """The estimate for the centre of a disc and not for what it hears of a bent wave.
-
-    A wave bent with radius R reaches the rim later than the middle; averaged over a disc turned by theta that is
-    a²/(8 R c) (1 + cos²) (derived), which to leading order looks like ez larger by a²/(4 R).
-    """
-    return replace(estimate, z_m=estimate.z_m - radius_m**2 / (4 * wave_radius_m))
-
-
 @dataclass
 class PivotFit:
     """Normal equations, one point at a time; memory and cost per point do not grow.
 
     `order_scale` is the number of points planned; it only scales the drift column. `taken_s` is what earlier steps
-    have moved the arrivals by, taken off those that come.
+    have moved the arrivals by, taken off those that come. `scale_u` is what is not known of the model, relative to
+    the whole offset.
     """
 
     speed_m_s: float
@@ -106,6 +106,7 @@ class PivotFit:
     after: Tail | None = None
     origin_s: float = 0.0
     taken_s: float = 0.0
+    scale_u: float = SCALE_U
 
     def row(self, theta: float, order: int) -> Vector:
         """Row of the model: constant, ex, ez, drift."""
@@ -180,7 +181,7 @@ class PivotFit:
         _, x, z = solution[:3]
         bend = self._bend(float(x), float(z))
         x, z = x + bend[0], z + bend[1]
-        model = (BEND_U * bend) ** 2 + SCALE_U**2 * (x**2 + z**2)
+        model = (BEND_U * bend) ** 2 + self.scale_u**2 * (x**2 + z**2)
         return PivotEstimate(
             x_m=float(x),
             z_m=float(z),
@@ -191,6 +192,7 @@ class PivotFit:
             points=self.points,
             coefficients=solution,
             coefficient_covariance=covariance,
+            order_scale=self.order_scale,
             step_s=None if self.after is None else float(solution[-1]),
             step_u_s=0.0 if self.after is None else float(np.sqrt(covariance[-1, -1])),
         )
@@ -213,32 +215,61 @@ class PivotFit:
         return np.block([[normal, column], [column.T, column[:1]]]), np.append(moment, self.after.moment)
 
 
+Late = Callable[[float, float], Vector]  # (x, z) in m to what comes later than a plane wave's path, s, shape (n,)
+ROUNDS = 4
+
+
 def fit_pivot(
-    theta: Vector, arrival_s: Vector, sigma_s: Vector, order: NDArray[np.intp], speed_m_s: float, wave_radius_m: float
+    theta: Vector,
+    arrival_s: Vector,
+    sigma_s: Vector,
+    order: NDArray[np.intp],
+    speed_m_s: float,
+    late: Late | None = None,
 ) -> PivotEstimate | None:
     """All points at once; those far off (over five standard deviations) are left out once.
 
     All arrays have shape (n,): angles in rad, arrivals and their standard uncertainties in s, place in the order
-    of visiting. None is returned where the angles do not determine the offset.
+    of visiting. `late` is what a real wave adds to the arrival of a plane one for an offset (x, z); it is put right by
+    repeating the linear fit. The covariance is that of the arrivals alone. None is returned where the angles do not
+    determine the offset.
     """
-    fit = _fitted(theta, arrival_s, sigma_s, order, speed_m_s, wave_radius_m)
-    estimate = fit.estimate()
+    kept = np.ones(theta.size, np.bool_)
+    found = _repeated(theta, arrival_s, sigma_s, order, speed_m_s, late, kept)
+    if found is None:
+        return None
+    estimate, residual = found
+    off = np.abs(residual)
+    spread = 1.4826 * float(np.median(off))
+    kept = off <= 5 * np.maximum(spread, np.hypot(sigma_s, TIMING_FLOOR_S))
+    if kept.all():
+        return estimate
+    again = _repeated(theta, arrival_s, sigma_s, order, speed_m_s, late, kept)
+    return again[0] if again else estimate
+
+
+def _repeated(
+    theta: Vector,
+    arrival_s: Vector,
+    sigma_s: Vector,
+    order: NDArray[np.intp],
+    speed_m_s: float,
+    late: Late | None,
+    kept: NDArray[np.bool_],
+) -> tuple[PivotEstimate, Vector] | None:
+    """The fit to the points that are kept, and the residuals of all, s, shape (n,)."""
+    x, z, time = 0.0, 0.0, arrival_s
+    estimate: PivotEstimate | None = None
+    for _ in range(ROUNDS if late else 1):
+        time = arrival_s - late(x, z) if late else arrival_s
+        fit = PivotFit(speed_m_s, inf, int(order.max(initial=0)), scale_u=0.0)
+        for i in np.nonzero(kept)[0]:
+            fit.add(float(theta[i]), float(time[i]), float(sigma_s[i]), int(order[i]))
+        estimate = fit.estimate()
+        if estimate is None:
+            return None
+        x, z = estimate.x_m, estimate.z_m
     if estimate is None:
         return None
     expected = [estimate.expected(fit.row(float(a), int(n)))[0] for a, n in zip(theta, order, strict=True)]
-    residual = np.abs(arrival_s - np.array(expected))
-    spread = 1.4826 * float(np.median(residual))
-    kept = residual <= 5 * max(spread, TIMING_FLOOR_S)
-    if kept.all():
-        return estimate
-    again = _fitted(theta[kept], arrival_s[kept], sigma_s[kept], order[kept], speed_m_s, wave_radius_m).estimate()
-    return again or estimate
-
-
-def _fitted(
-    theta: Vector, arrival_s: Vector, sigma_s: Vector, order: NDArray[np.intp], speed_m_s: float, wave_radius_m: float
-) -> PivotFit:
-    fit = PivotFit(speed_m_s, wave_radius_m, int(order.max(initial=0)))
-    for a, t, s, n in zip(theta, arrival_s, sigma_s, order, strict=True):
-        fit.add(float(a), float(t), float(s), int(n))
-    return fit
+    return estimate, time - np.array(expected)

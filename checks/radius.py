@@ -8,13 +8,13 @@ property of the element.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
-from checks.directivity import PlaneResponse, beam_w, half_angle
+from checks.directivity import HalfAngle, PlaneResponse
 from checks.element import (
     EDGES,
     Edge,
@@ -25,7 +25,6 @@ from checks.element import (
     radius_from_angle,
 )
 from checks.errors import MeasurementError
-from checks.observation import Circumstances
 
 Vector = NDArray[np.float64]
 CANNOT_TELL = 6.0  # difference of the criterion below which two behaviours are not told apart
@@ -55,6 +54,11 @@ class RadiusFit:
     points: int
     model_u_m: Vector = field(default_factory=lambda: np.zeros(0))
 
+    @property
+    def freedom(self) -> int:
+        """Degrees of freedom of the residuals."""
+        return max(1, self.points - 1 - 2 * self.frequencies_hz.size)
+
 
 def fit_edges(plane: PlaneResponse, speed_m_s: float, nominal_radius_m: float) -> list[RadiusFit]:
     """Fits for all edge behaviours, the best first.
@@ -62,11 +66,19 @@ def fit_edges(plane: PlaneResponse, speed_m_s: float, nominal_radius_m: float) -
     Raises:
         MeasurementError: no usable frequency.
     """
+    return sorted((fit_edge(plane, speed_m_s, nominal_radius_m, edge) for edge in EDGES), key=lambda f: f.criterion)
+
+
+def fit_edge(plane: PlaneResponse, speed_m_s: float, nominal_radius_m: float, edge: Edge) -> RadiusFit:
+    """The fit for one edge behaviour.
+
+    Raises:
+        MeasurementError: no usable frequency.
+    """
     lines = np.nonzero(plane.usable)[0]
     if not lines.size:
         raise MeasurementError("at no frequency is there enough signal over noise: more drive, or more averages")
-    fits = [_fit(plane, lines, speed_m_s, nominal_radius_m, edge) for edge in EDGES]
-    return sorted(fits, key=lambda f: f.criterion)
+    return _fit(plane, lines, speed_m_s, nominal_radius_m, edge)
 
 
 def told_apart(fits: Sequence[RadiusFit]) -> bool:
@@ -99,7 +111,7 @@ def in_doubt(fits: Sequence[RadiusFit]) -> list[RadiusFit]:
 def _fit(plane: PlaneResponse, lines: NDArray[np.intp], speed_m_s: float, nominal_m: float, edge: Edge) -> RadiusFit:
     from scipy.optimize import least_squares
 
-    rows = plane.arrival_usable
+    rows = np.isfinite(plane.amplitude).all(axis=1)
     theta, data = plane.theta[rows], plane.amplitude[rows][:, lines]
     sigma = plane.sigma[rows][:, lines]
     k = 2 * np.pi * plane.frequencies_hz[lines] / speed_m_s
@@ -182,22 +194,6 @@ def _covariance(jacobian: Vector, residual: Vector) -> Vector:
     return np.asarray(bread @ (flat.T @ mixed) @ bread)
 
 
-def in_a_real_beam(fit: RadiusFit, c: Circumstances) -> RadiusFit:
-    """The fit with what a real beam does to the radius: it is no plane wave over the element.
-
-    Across the face the amplitude falls as exp(-r²/w²), which makes the element look smaller by up to a²/(12 w²) (from
-    the second moment of the weighted face, derived). And a plane source is seen under an angle of a_s/L: waves from
-    all of it widen the pattern, by up to (a_s/L)²/2 of its width (second moment of the directions, derived). Half of
-    either is put right, all of it is uncertainty (rectangular).
-    """
-    taper = fit.radius_m**2 / (12 * beam_w(fit.frequencies_hz, c) ** 2)
-    seen = (c.source_radius_m / c.distance_m) ** 2 / 2 if c.focal_length_m is None else 0.0
-    radius = fit.radius_m * (1 + taper / 2 + seen / 2)
-    model = radius * np.sqrt((taper**2 + seen**2) / 12)
-    common = np.hypot(model, fit.model_u_m) if fit.model_u_m.size else model
-    return replace(fit, radius_m=radius, radius_u_m=np.hypot(fit.radius_u_m, model), model_u_m=common)
-
-
 @dataclass(frozen=True)
 class AngleRadius:
     """Effective radius from the half-angles at one frequency, m; None where a level is never reached."""
@@ -209,15 +205,20 @@ class AngleRadius:
     standard_uncertainty_m: float | None
 
 
-def radii_from_angles(plane: PlaneResponse, speed_m_s: float) -> list[AngleRadius]:
-    """As the standard does it, at every usable frequency: mean of a_h3 and a_h6 where both exist."""
+def radii_from_angles(
+    plane: PlaneResponse, halves: Mapping[tuple[int, float], HalfAngle], speed_m_s: float
+) -> list[AngleRadius]:
+    """As the standard does it, at every usable frequency: mean of a_h3 and a_h6 where both exist.
+
+    `halves` has the half-angles by number of the line and level in dB, -3 and -6.
+    """
     found = []
     for line in np.nonzero(plane.usable)[0]:
         frequency = float(plane.frequencies_hz[line])
         values: list[float | None] = []
         spreads: list[float] = []
         for level in (-3, -6):
-            half = half_angle(plane, int(line), level)
+            half = halves[int(line), float(level)]
             if half.half_width is None or half.half_width <= 0:
                 values.append(None)
                 continue

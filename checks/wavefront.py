@@ -11,8 +11,10 @@ FLAT = 0.05
 STRONGEST = 2.0  # over the distance; between the nulls of a near field the axis tells nothing of the wave beside it
 
 
-def curvature(c: Circumstances) -> float:
+def curvature(c: Circumstances, source: float = 1.0) -> float:
     """Curvature of the wavefront on the axis at the drive frequency, 1/m; positive where it runs apart.
+
+    `source` is the true radius of the source over the one in the profile.
 
     On the axis of a piston, plane or focused at F, the envelope is (1 - exp(-i phi)) / (1 - z/F) with
     phi = k a²/2 (1/z - 1/F) (H. T. O'Neil 1949, to second order in a/z). The paraxial wave equation turns its
@@ -21,7 +23,7 @@ def curvature(c: Circumstances) -> float:
     """
     z, k = c.distance_m, 2 * pi * c.drive_hz / WATER_M_S
     gather = 0.0 if c.focal_length_m is None else 1 / c.focal_length_m
-    strength = k * c.source_radius_m**2 / (4 * z * z)
+    strength = k * (source * c.source_radius_m) ** 2 / (4 * z * z)
     half = strength * z * (1 - z * gather)
     if abs(half) < FLAT:  # cot(x) = 1/x - x/3
         return 1 / z - strength * half / 3

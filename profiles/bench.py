@@ -101,9 +101,14 @@ class Geometry(Model):
 
 
 class Water(Model):
-    """Taken where no thermometer answers."""
+    """What is known of the water besides what a thermometer says."""
 
-    temperature_c: Annotated[float, Field(ge=5, le=40)] = 20.0
+    temperature_c: Annotated[float, Field(ge=5, le=40)] = Field(
+        default=20.0, description="taken where no thermometer answers"
+    )
+    temperature_u_c: Annotated[float, Field(gt=0, le=5)] = Field(
+        default=0.1, description="standard uncertainty of the temperature, whoever tells it"
+    )
 
 
 class Bench(Profile):

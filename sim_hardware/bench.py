@@ -63,7 +63,7 @@ def live_bench(
     if channel > CHANNELS:
         raise BenchError(f"instruments.oscilloscope.channel: {channel} given; allowed: 1 to {CHANNELS}")
     source = LiveSource(tank, motion, generator.drive, channel)
-    thermometer = Thermometer(lambda: f"{tank.temperature_c(timeline.now()):.3f}", timeline.run_due)
+    thermometer = Thermometer(lambda: f"{tank.thermometer_c(timeline.now()):.3f}", timeline.run_due)
     return _assemble(instruments, timeline, motion, sync, generator, source, thermometer)
 
 

@@ -60,6 +60,6 @@ class Tank(Protocol):
         """Shape (points,), volts at the input, averaged, noise included; not yet clipped or quantised."""
         ...
 
-    def temperature_c(self, time_s: float) -> float:
-        """Water temperature."""
+    def thermometer_c(self, time_s: float) -> float:
+        """What a thermometer in the water says."""
         ...

@@ -21,6 +21,7 @@ from numpy.typing import NDArray
 
 Complex = NDArray[np.complex64]
 Real = NDArray[np.float64]
+_NEAR_FIELD = 0.9 * math.pi  # of q: beyond it lies the axial null next to the last maximum
 
 
 @dataclass(frozen=True)
@@ -36,10 +37,20 @@ class SourceShape:
         """Radius in m of the virtual source of a component at `order` times the drive's frequency."""
         return float(self.radius_m * max(order, 1.0) ** (self.beam_exponent - 1))
 
-    def added_curvature(self, order: float) -> float:
-        """What the virtual source's curvature exceeds the real one's by, in 1/m."""
-        away_from_focus = 1 / self.reference_m - self.curvature
-        return float(away_from_focus * (1 - max(order, 1.0) ** (1 - 2 * self.beam_exponent)))
+    def added_curvature(self, order: float, wavenumber: float) -> float:
+        """What the virtual source's curvature exceeds the real one's by, in 1/m, at a component's wavenumber.
+
+        A harmonic grows out of the wave itself along its way, so at the reference point its wavefronts are bent as
+        those of the drive's frequency. With K = k a²/4 and q = K (1/z - 1/F) the bend on the axis is
+        1/z + (K/z²)(cot q - 1/q) (paraxial, from O'Neil's axial pressure; derived). Within the near field, where the
+        axis tells nothing of the wave beside it, the virtual source stands to its own near field as the real one.
+        """
+        if order <= 1.0:
+            return 0.0
+        away = 1 / self.reference_m - self.curvature
+        drive = wavenumber / order * self.radius_m**2 / 4
+        own = wavenumber * self.radius(order) ** 2 / 4
+        return away - _as_bent(drive * away, drive / own) / own
 
     @property
     def curvature(self) -> float:
@@ -66,7 +77,7 @@ def relative_pressure(shape: SourceShape, wavenumber: float, order: float, r: Re
     rp, zp = r.reshape(-1, 1), z.reshape(-1, 1)
     distance = np.hypot(rp, zp)
     steady = (rho_m**2 if shape.focal_m is None else 2 * depth_m * (shape.focal_m - zp)) + 0 * rp
-    extra = (wavenumber * shape.added_curvature(order) / 2 * rho_m**2).astype(np.float32)
+    extra = (wavenumber * shape.added_curvature(order, wavenumber) / 2 * rho_m**2).astype(np.float32)
     # R - D = (R^2 - D^2) / (R + D) keeps its digits in single precision, where R - D itself would lose them.
     excess = (2 * rp * rho_m).astype(np.float32)[..., None] * -cosine
     excess += steady.astype(np.float32)[..., None]
@@ -82,11 +93,26 @@ def relative_pressure(shape: SourceShape, wavenumber: float, order: float, r: Re
     return (total * np.complex64(1j * wavenumber / (2 * math.pi))).reshape(r.shape)
 
 
+@lru_cache(maxsize=4096)
+def _as_bent(q: float, share: float) -> float:
+    """The q of a virtual source for which cot q - 1/q is `share` of that of the real one's."""
+    from scipy.optimize import brentq
+
+    if abs(q) < 1e-6 or abs(q) >= _NEAR_FIELD:
+        return q
+
+    def bend(at: float) -> float:
+        return 1 / math.tan(at) - 1 / at
+
+    wanted = share * bend(abs(q))
+    return math.copysign(float(brentq(lambda at: bend(at) - wanted, 1e-9, abs(q))), q)
+
+
 def _density(shape: SourceShape, wavenumber: float, order: float, r: Real, z: Real) -> tuple[int, int]:
     """Nodes along the radius and around (over half a turn) that the phase across the source needs."""
     a = shape.radius(order)
     sideways = wavenumber * a * float(np.max(r / np.hypot(r, z)))
-    curvature = shape.curvature + shape.added_curvature(order)
+    curvature = shape.curvature + shape.added_curvature(order, wavenumber)
     inward = wavenumber * a**2 / 2 * float(np.max(np.abs(1 / np.hypot(r, z) - curvature)))
     # A sum over N spokes of half a turn is exact for waves up to order 2 N; Bessel functions die out some way
     # above their argument. Gauss-Legendre wants rather more than half a node per radian of half the phase.

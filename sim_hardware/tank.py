@@ -67,6 +67,10 @@ class SimulatedTank:
         tank = self._truth.tank
         return tank.temperature_c + tank.temperature_drift_c_per_h * time_s / 3600
 
+    def thermometer_c(self, time_s: float) -> float:
+        """What a thermometer in the water says."""
+        return self.temperature_c(time_s) + self._truth.tank.thermometer_error_c
+
     def voltage(self, request: CaptureRequest) -> Single:
         """Shape (points,), volts at the input, averaged, noise included; not yet clipped or quantised."""
         electronics = self._truth.electronics

@@ -133,6 +133,9 @@ class TankTruth(Model):
 
     temperature_c: Annotated[float, Field(ge=5, le=40)] = 20.0
     temperature_drift_c_per_h: Finite = 0.0
+    thermometer_error_c: Annotated[float, Field(ge=-5, le=5)] = Field(
+        default=0.0, description="what the thermometer says less what is true"
+    )
     echoes: tuple[Echo, ...] = ()
     reverberation: Reverberation | None = None
 

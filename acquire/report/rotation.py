@@ -10,7 +10,8 @@ from numpy.typing import NDArray
 
 from acquire.report import figures
 from acquire.report.page import Picture, picture, section
-from acquire.results.rotation import PlaneResult, edge_words, fitted_levels
+from acquire.results.rotation import fitted_levels
+from checks.rotation_fit import PlaneResult, edge_words
 
 FIRST_NULLS = (3.83170597, 7.01558667, 10.17346814)  # of J1
 CURVES = 5

@@ -15,6 +15,7 @@ from acquire.results.quantity import Quantity, written
 from acquire.results.summary import SHOWN, conditions
 from acquire.store import StoredScan
 from checks.observation import Observation
+from checks.rotation_fit import PlaneResult
 
 LISTED = (
     "mean effective radius",
@@ -60,7 +61,7 @@ def report(stored: StoredScan) -> str:
     )
 
 
-def rotation_sections(stored: StoredScan, results: Sequence[rotation.PlaneResult]) -> list[str]:
+def rotation_sections(stored: StoredScan, results: Sequence[PlaneResult]) -> list[str]:
     """Sections of a rotation."""
     from acquire.report.rotation import sections
 

@@ -3,57 +3,19 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
 from math import sqrt
 
 import numpy as np
 from numpy.typing import NDArray
 
 from acquire.results.quantity import Quantity
-from checks.directivity import HalfAngle, PlaneResponse, half_angle, plane_responses, seen_from_the_source
-from checks.element import Edge
+from checks.directivity import plane_responses
 from checks.observation import Circumstances, Observation
-from checks.pivot import PivotEstimate, fit_pivot, without_face
-from checks.radius import (
-    AngleRadius,
-    RadiusFit,
-    RadiusLaw,
-    fit_edges,
-    fit_law,
-    in_a_real_beam,
-    in_doubt,
-    radii_from_angles,
-    told_apart,
-)
+from checks.rotation_fit import PlaneResult, edge_words, fit_plane
+from checks.warmth import smoothed
 from checks.water import speed_of_sound
-from checks.wavefront import wave_radius
 
-LEVELS_DB = (-3.0, -6.0)
-SPEED_U = 5e-4  # relative: a thermometer within 0.2 °C
 CONVENTION = "levels are exact decibels: 2 J1(x)/x is -3 dB at x = 1.613741 and -6 dB at x = 2.211785"
-
-
-@dataclass(frozen=True)
-class PlaneResult:
-    """All that one plane of rotation gives."""
-
-    response: PlaneResponse
-    halves: dict[tuple[int, float], HalfAngle]  # line, level in dB
-    fits: list[RadiusFit]  # best first
-    by_angles: list[AngleRadius]
-    law: RadiusLaw | None
-    pivot: PivotEstimate | None
-    speed_m_s: float
-
-    @property
-    def best(self) -> RadiusFit:
-        """Fit of the edge behaviour that describes the data best."""
-        return self.fits[0]
-
-    @property
-    def edge_is_known(self) -> bool:
-        """Whether the data tell the edge behaviours apart."""
-        return told_apart(self.fits)
 
 
 def rotation_results(seen: Sequence[Observation], circumstances: Circumstances) -> list[PlaneResult]:
@@ -64,47 +26,9 @@ def rotation_results(seen: Sequence[Observation], circumstances: Circumstances) 
     """
     warmth = float(np.mean([o.temperature_c for o in seen]))
     speed = speed_of_sound(warmth)
-    delays = {o.index: circumstances.distance_m / speed_of_sound(o.temperature_c) for o in seen}
-    return [_plane_result(response, circumstances, speed, delays) for response in plane_responses(seen, circumstances)]
-
-
-def _plane_result(
-    response: PlaneResponse, circumstances: Circumstances, speed: float, delays: dict[int, float]
-) -> PlaneResult:
-    rows = response.arrival_usable
-    warm = np.array([delays[int(i)] for i in response.order[rows]])
-    pivot = fit_pivot(
-        response.theta[rows],
-        response.arrival_s[rows] - (warm - warm.mean()),
-        response.arrival_sigma_s[rows],
-        response.order[rows],
-        speed,
-        wave_radius(circumstances),
-    )
-    if pivot is not None:
-        pivot = without_face(pivot, circumstances.nominal_radius_m, wave_radius(circumstances))
-    fits = fit_edges(response, speed, circumstances.nominal_radius_m)
-    if pivot is not None:
-        uncorrected = {fit.edge: fit for fit in fits}
-        response = seen_from_the_source(response, pivot.x_m, pivot.z_m, circumstances)
-        fits = [wider(f, uncorrected[f.edge]) for f in fit_edges(response, speed, circumstances.nominal_radius_m)]
-    fits = in_doubt([in_a_real_beam(f, circumstances) for f in fits])
-    usable = np.nonzero(response.usable)[0]
-    halves = {(int(n), level): half_angle(response, int(n), level) for n in usable for level in LEVELS_DB}
-    return PlaneResult(
-        response, halves, fits, radii_from_angles(response, speed), fit_law(fits[0], SPEED_U), pivot, speed
-    )
-
-
-def wider(fit: RadiusFit, uncorrected: RadiusFit) -> RadiusFit:
-    """The fit with what the pivot offset was taken to do to it as one more uncertainty.
-
-    What was put right lies in the middle of what it may be, so as much to either side stays open (rectangular).
-    """
-    change = np.abs(fit.radius_m - uncorrected.radius_m) / np.sqrt(3)
-    zero_u = np.hypot(fit.angle_zero_u, abs(fit.angle_zero - uncorrected.angle_zero) / np.sqrt(3))
-    radius_u = np.hypot(fit.radius_u_m, change)
-    return replace(fit, radius_u_m=radius_u, angle_zero_u=float(zero_u), model_u_m=change)
+    warmths = smoothed(np.array([o.temperature_c for o in seen]))
+    delays = {o.index: circumstances.distance_m / speed_of_sound(float(t)) for o, t in zip(seen, warmths, strict=True)}
+    return [fit_plane(response, circumstances, speed, delays) for response in plane_responses(seen, circumstances)]
 
 
 def quantities(results: Sequence[PlaneResult], circumstances: Circumstances) -> list[Quantity]:
@@ -162,7 +86,7 @@ def _radii(r: PlaneResult, plane: dict[str, float]) -> list[Quantity]:
     if not r.edge_is_known:
         method += "; the data do not tell the edge behaviours apart"
     for f, a, u in zip(fit.frequencies_hz, fit.radius_m, fit.radius_u_m, strict=True):
-        whole = sqrt(float(u) ** 2 + (SPEED_U * float(a)) ** 2)
+        whole = sqrt(float(u) ** 2 + (r.speed_u * float(a)) ** 2)
         conditions = plane | {"frequency_hz": float(f), "edge": fit.edge}
         found.append(Quantity("effective radius", float(a), "m", whole, conditions, method))
     for by in r.by_angles:
@@ -199,7 +123,7 @@ def mean_radius(r: PlaneResult) -> tuple[float, float]:
     inner = float(weight**2 @ np.maximum(own, 0.0))
     scatter = float(weight @ (fit.radius_m - mean) ** 2) / max(1, fit.radius_m.size - 1)
     common = float(weight @ fit.model_u_m)
-    return mean, sqrt(max(inner, scatter) + common**2 + (SPEED_U * mean) ** 2)
+    return mean, sqrt(max(inner, scatter) + common**2 + (r.speed_u * mean) ** 2)
 
 
 def _geometry(r: PlaneResult, plane: dict[str, float], circumstances: Circumstances) -> list[Quantity]:
@@ -222,11 +146,6 @@ def _geometry(r: PlaneResult, plane: dict[str, float], circumstances: Circumstan
         conditions: dict[str, float | str] = {**plane, "axis": axis, "correction_applied_m": applied}
         found.append(Quantity("pivot offset", value, "m", sqrt(float(variance)), conditions, method))
     return found
-
-
-def edge_words(edge: Edge) -> str:
-    """As people say it."""
-    return {"rigid": "rigid baffle", "soft": "soft baffle", "unbaffled": "no baffle"}[edge]
 
 
 def fitted_levels(r: PlaneResult, theta: NDArray[np.float64], lines: Sequence[int]) -> NDArray[np.float64]:

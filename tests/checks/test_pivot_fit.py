@@ -25,7 +25,7 @@ def arrivals(x: float, z: float, drift_s: float = 0.0, seed: int | None = None) 
 @settings(max_examples=60, deadline=None)
 @given(st.floats(-2e-3, 2e-3), st.floats(-2e-3, 2e-3), st.floats(-1e-8, 1e-8), st.integers(0, 2**32 - 1))
 def test_any_offset_is_recovered_beside_any_drift(x: float, z: float, drift: float, seed: int) -> None:
-    found = fit_pivot(THETA, arrivals(x, z, drift, seed), SIGMA, ORDER, SPEED, 1e6)
+    found = fit_pivot(THETA, arrivals(x, z, drift, seed), SIGMA, ORDER, SPEED)
     assert found is not None
     distance = np.array([found.x_m - x, found.z_m - z])
     assert distance @ np.linalg.solve(found.covariance, distance) < 30  # chi-squared, 2: one in three million
@@ -35,8 +35,8 @@ def test_any_offset_is_recovered_beside_any_drift(x: float, z: float, drift: flo
 @given(st.permutations(range(THETA.size)))
 def test_the_order_of_the_list_does_not_matter(order: list[int]) -> None:
     t = arrivals(3e-4, -2e-4, 1e-9, 5)
-    one = fit_pivot(THETA, t, SIGMA, ORDER, SPEED, DISTANCE_M)
-    other = fit_pivot(THETA[order], t[order], SIGMA, ORDER[order], SPEED, DISTANCE_M)
+    one = fit_pivot(THETA, t, SIGMA, ORDER, SPEED)
+    other = fit_pivot(THETA[order], t[order], SIGMA, ORDER[order], SPEED)
     assert one is not None
     assert other is not None
     assert (other.x_m, other.z_m) == pytest.approx((one.x_m, one.z_m), abs=1e-10)
@@ -45,7 +45,7 @@ def test_the_order_of_the_list_does_not_matter(order: list[int]) -> None:
 def test_a_few_wild_arrivals_are_left_out() -> None:
     t = arrivals(3e-4, -2e-4, seed=6)
     t[[7, 30, 55]] += [4e-8, -2e-7, 4e-7]
-    found = fit_pivot(THETA, t, SIGMA, ORDER, SPEED, DISTANCE_M)
+    found = fit_pivot(THETA, t, SIGMA, ORDER, SPEED)
     assert found is not None
     assert found.points == THETA.size - 3
     assert (found.x_m, found.z_m) == pytest.approx((3e-4, -2e-4), abs=2e-6)
@@ -54,7 +54,7 @@ def test_a_few_wild_arrivals_are_left_out() -> None:
 def test_larger_scatter_than_stated_widens_the_uncertainty() -> None:
     wild = arrivals(0, 0) + np.random.default_rng(8).normal(0, 1e-9, THETA.size)
     calm = arrivals(0, 0, seed=8)
-    a, b = (fit_pivot(THETA, t, SIGMA, ORDER, SPEED, DISTANCE_M) for t in (wild, calm))
+    a, b = (fit_pivot(THETA, t, SIGMA, ORDER, SPEED) for t in (wild, calm))
     assert a is not None
     assert b is not None
     assert np.sqrt(a.covariance[0, 0] / b.covariance[0, 0]) == pytest.approx(10, rel=0.2)
@@ -67,7 +67,7 @@ def test_angles_that_do_not_determine_it_give_none() -> None:
         assert fit.estimate() is None
         fit.add(0.0, 8e-5, 1e-10, order)
     assert fit.estimate() is None
-    assert fit_pivot(THETA[:3], arrivals(0, 0)[:3], SIGMA[:3], ORDER[:3], SPEED, DISTANCE_M) is None
+    assert fit_pivot(THETA[:3], arrivals(0, 0)[:3], SIGMA[:3], ORDER[:3], SPEED) is None
 
 
 def test_the_expectation_of_one_more_arrival_scatters_as_it_says() -> None:
@@ -90,7 +90,7 @@ def test_the_statistic_of_a_centred_element_is_hotellings() -> None:
     theta, statistics = THETA[:24], []
     for seed in range(500):
         t = np.random.default_rng(seed).normal(8e-5, 1e-9, theta.size)
-        found = fit_pivot(theta, t, np.full(theta.size, 1e-12), ORDER[:24], SPEED, 1e6)
+        found = fit_pivot(theta, t, np.full(theta.size, 1e-12), ORDER[:24], SPEED)
         if found is None or found.points < theta.size:  # one beyond five standard deviations was left out
             continue
         e = np.array([found.x_m, found.z_m])

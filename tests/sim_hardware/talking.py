@@ -46,5 +46,5 @@ class KnownTank:
         t = request.start_s + np.arange(request.points) / request.sample_rate_hz
         return self._voltage(t).astype(np.float32)
 
-    def temperature_c(self, time_s: float) -> float:
+    def thermometer_c(self, time_s: float) -> float:
         return 20.0 + time_s / 1000

@@ -65,7 +65,21 @@ def test_harmonics_have_beams_narrower_by_the_given_power(shape: SourceShape, or
         p = np.abs(pressure(shape, list(r), z, n))
         return float(np.interp(-0.5 * p[0], -p[: int(np.argmax(p < 0.4 * p[0]))], r[: int(np.argmax(p < 0.4 * p[0]))]))
 
-    assert half_width(order) == pytest.approx(half_width(1) * order**-0.75, rel=0.01)
+    # a beam bent as the drive's has not quite its shape near the last maximum, which is at 84 mm here
+    assert half_width(order) == pytest.approx(half_width(1) * order**-0.75, rel=0.01 if shape is BOWL else 0.07)
+
+
+@pytest.mark.parametrize("exponent", [0.6, 0.75, 0.9])
+@pytest.mark.parametrize("order", [2, 5, 12])
+def test_harmonics_are_bent_as_the_wave_out_of_which_they_grow(exponent: float, order: int) -> None:
+    shape = SourceShape(radius_m=3e-3, focal_m=None, beam_exponent=exponent, reference_m=0.06)
+
+    def bend(n: int) -> float:
+        k, r = n * WAVENUMBER, 0.2 / n**0.5
+        p = pressure(shape, [0, r], [60.0], n).astype(complex) * np.exp(-1j * k * np.hypot([0, r], 60.0) * 1e-3)
+        return float(-2 * np.angle(p[1] / p[0]) / k / (r * 1e-3) ** 2)
+
+    assert bend(order) == pytest.approx(bend(1), rel=0.03)
 
 
 def test_orders_stand_still_around_each_harmonic_and_never_fall() -> None:

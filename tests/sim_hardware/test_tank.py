@@ -53,8 +53,8 @@ def test_harmonics_at_the_reference_point_are_those_of_the_steepened_wave() -> N
         f = n * 2e6
         loss = np.exp(-water.absorption(20) * f**2 * 0.1) / (1 + 1j * n * 2 / PLAIN.element.corner_mhz)
         ideal = 800e3 * 50e-9 * expected[n - 1] * loss * np.exp(-1j * np.pi / 6)
-        # The element averages over a beam that is narrower for each harmonic: 1 % and less at n = 6, more above.
-        assert amplitude(wave, wanted, n) == pytest.approx(ideal, rel=0.01 if n <= 6 else 0.06)
+        # The element averages over a beam that is narrower for each harmonic: 2 % and less at n = 6, more above.
+        assert amplitude(wave, wanted, n) == pytest.approx(ideal, rel=0.02 if n <= 6 else 0.06)
 
 
 def test_the_positive_peak_exceeds_the_negative() -> None:

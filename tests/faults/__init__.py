@@ -1,0 +1,1 @@
+"""Benches drawn at random, scanned through the simulator's physics and the real checks, without sockets."""
