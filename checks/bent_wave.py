@@ -14,6 +14,7 @@ with C = k a²/(4 z²) cot(phi/2) - 1/(F - z), w = k² a²/(8 z²), s = (1 + cos
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import lru_cache
 from math import pi, sqrt
 
 import numpy as np
@@ -128,6 +129,7 @@ def face_delay(theta: Vector, aside: Vector, wave: Wave, radius_m: float, edge: 
     return np.asarray(-np.angle(here / middle) / (first.wavenumber[0] * speed_m_s))
 
 
+@lru_cache(maxsize=64)
 def _disc(along: int) -> tuple[Vector, Vector, Vector]:
     """Nodes and weights on half of the unit disc, whose other half is alike; the weights sum to one."""
     from scipy.special import roots_chebyu, roots_legendre

@@ -8,6 +8,7 @@ from math import cos, degrees, hypot, log, sin, sqrt
 import numpy as np
 
 from checks.arrival import Arrival, SharedTracker
+from checks.bent_wave import face_delay, wave_of
 from checks.directivity import beam_w
 from checks.finding import Change, Finding, Severity, Size
 from checks.live_step import Arrived, StepWatch
@@ -23,6 +24,11 @@ LEVEL_MATTERS_DB = 0.05  # at the largest angle; 0.6 % of the level
 ANGLE_MATTERS = 2e-3  # rad: the element looks at the source under another angle
 SURE = 2.0  # standard uncertainties that are taken off before an offset is said to matter
 NEPER_DB = 20 / log(10)
+FACE_U = 0.25  # of a²/R: the edge behaviour (a²/4R either way) and a radius known within some 20 %
+UNSURE = 0.3  # of the correction for the face, point by point: it grows towards a null that is not quite where thought
+NULL_U, WEAK = 0.15, 0.05  # of a²/R; and the least level that counts as one
+AVERAGED, SUDDEN_C = 10, 0.02  # points; and what is no slow change of the water
+SOURCE_U = 0.03  # relative, of the source radius in a profile
 BEAM_KNOWN_DB = 20.0  # beyond this the Gaussian is no estimate of the beam
 
 
@@ -59,14 +65,38 @@ class PivotCheck:
         self._speed = speed_of_sound(20.0)
         self._fit = self._new_fit(self._speed)
         self._estimate: PivotEstimate | None = None
-        self._largest = 0.0
+        self._largest = self._strongest = 0.0
         self._first = 0
         self._warm_s: float | None = None
+        self._warmth: float | None = None
         self._offset = Standing()
         self._steps = StepWatch(false_alarm_rate)
 
     def _new_fit(self, speed_m_s: float) -> PivotFit:
-        return PivotFit(speed_m_s, wave_radius(self._c), self._c.planned_points)
+        """A fit along the axis as the wave has it, with what is not known of the wave and of the face."""
+        c = self._c
+        self._wave = wave_of(c, speed_m_s)
+        stretch = float(self._wave.stretch[0])
+        return PivotFit(
+            speed_m_s / stretch,
+            wave_radius(c),
+            c.planned_points,
+            scale_u=hypot(c.speed_u, SOURCE_U * 2 * (1 - stretch)),
+            face_u_m=FACE_U * c.nominal_radius_m**2 * abs(self._wave.bend),
+        )
+
+    def _face(self, theta: float) -> float:
+        """What the face of an element as in the profile hears too late, s; its edge in the middle of what may be."""
+        c = self._c
+        at, nowhere = np.array([theta]), np.zeros(1)
+        return float(face_delay(at, nowhere, self._wave, c.nominal_radius_m, "unbaffled", self._speed)[0])
+
+    def _unsure(self, face_s: float, seen: Observation) -> float:
+        """Standard uncertainty of that, s. A null that is not quite where thought turns the phase as 1/level²."""
+        self._strongest = max(self._strongest, abs(seen.components[0]))
+        level = max(abs(seen.components[0]) / self._strongest, WEAK)
+        whole = self._c.nominal_radius_m**2 * abs(self._wave.bend) / self._speed
+        return hypot(UNSURE * face_s, NULL_U * whole * (1 / level**2 - 1))
 
     def update(self, seen: Observation) -> Iterable[Change]:
         """One more point."""
@@ -77,11 +107,12 @@ class PivotCheck:
             self._offset, self._steps, self._estimate = Standing(), StepWatch(self._rate), None
             self._plane, self._first = seen.plane, seen.index
             self._fit = self._new_fit(speed_or(seen.temperature_c, self._speed))
-            self._largest = 0.0
+            self._largest = self._strongest = 0.0
         if not arrival.usable:
             return changes
-        theta, time = seen.commanded.theta, self._at_first_temperature(arrival, seen)
-        arrived = Arrived(theta, time, arrival.standard_uncertainty_s, seen.index)
+        theta, face = seen.commanded.theta, self._face(seen.commanded.theta)
+        time = self._at_first_temperature(arrival, seen) - face
+        arrived = Arrived(theta, time, hypot(arrival.standard_uncertainty_s, self._unsure(face, seen)), seen.index)
         before = self._fit.points
         stepped = self._steps.take(self._fit, arrived)
         self._largest = max(self._largest, abs(theta))
@@ -96,8 +127,15 @@ class PivotCheck:
         return [*self._offset.last_word(), *self._steps.finish()]
 
     def _at_first_temperature(self, arrival: Arrival, seen: Observation) -> float:
-        """Arrival as it would be at the temperature of the first point."""
-        self._speed = speed_or(seen.temperature_c, self._speed)
+        """Arrival as it would be at the temperature of the first point.
+
+        Readings are averaged over some points, so that their last digit does not show: that lags behind a slow drift
+        by a constant time, which changes nothing here. A sudden change is followed at once.
+        """
+        read = seen.temperature_c
+        slow = self._warmth is not None and abs(read - self._warmth) < SUDDEN_C
+        self._warmth = self._warmth + (read - self._warmth) / AVERAGED if slow and self._warmth is not None else read
+        self._speed = speed_or(self._warmth, self._speed)
         travel = self._c.distance_m / self._speed
         if self._warm_s is None:
             self._warm_s = travel

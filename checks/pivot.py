@@ -28,7 +28,6 @@ TIMING_FLOOR_S = 2e-11  # trigger jitter and sampling clock leave at least this 
 COLUMNS = 4
 WORST_CONDITION = 1e12
 BEND_U = 0.25  # relative, of what the bent wave takes and gives
-SCALE_U = 3e-3  # relative to the whole offset: speed of sound, scale of the rotation axis, slope of the beam
 
 
 @dataclass(frozen=True)
@@ -91,8 +90,8 @@ class PivotFit:
     """Normal equations, one point at a time; memory and cost per point do not grow.
 
     `order_scale` is the number of points planned; it only scales the drift column. `taken_s` is what earlier steps
-    have moved the arrivals by, taken off those that come. `scale_u` is what is not known of the model, relative to
-    the whole offset.
+    have moved the arrivals by, taken off those that come. What is not known of the model: `scale_u`, relative to the
+    whole offset, and `face_u_m`, of what the face hears of a bent wave, which looks like z.
     """
 
     speed_m_s: float
@@ -106,7 +105,8 @@ class PivotFit:
     after: Tail | None = None
     origin_s: float = 0.0
     taken_s: float = 0.0
-    scale_u: float = SCALE_U
+    scale_u: float = 0.0
+    face_u_m: float = 0.0
 
     def row(self, theta: float, order: int) -> Vector:
         """Row of the model: constant, ex, ez, drift."""
@@ -181,7 +181,7 @@ class PivotFit:
         _, x, z = solution[:3]
         bend = self._bend(float(x), float(z))
         x, z = x + bend[0], z + bend[1]
-        model = (BEND_U * bend) ** 2 + self.scale_u**2 * (x**2 + z**2)
+        model = (BEND_U * bend) ** 2 + self.scale_u**2 * (x**2 + z**2) + np.array([0.0, self.face_u_m**2])
         return PivotEstimate(
             x_m=float(x),
             z_m=float(z),
@@ -262,7 +262,7 @@ def _repeated(
     estimate: PivotEstimate | None = None
     for _ in range(ROUNDS if late else 1):
         time = arrival_s - late(x, z) if late else arrival_s
-        fit = PivotFit(speed_m_s, inf, int(order.max(initial=0)), scale_u=0.0)
+        fit = PivotFit(speed_m_s, inf, int(order.max(initial=0)))
         for i in np.nonzero(kept)[0]:
             fit.add(float(theta[i]), float(time[i]), float(sigma_s[i]), int(order[i]))
         estimate = fit.estimate()

@@ -12,7 +12,7 @@ from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.special import j1
+from scipy.special import j1, jv
 
 from checks.finding import Change, Check
 from checks.live import make_checks
@@ -24,6 +24,11 @@ CYCLES = 8
 TEMPERATURE_C = 20.0
 SPEED = 1482.38  # m/s, Marczak at 20 °C
 DISTANCE_M = 0.12
+# of the wave of a plane source of 6 mm there (O'Neil's axial pressure and the paraxial wave equation): its bend, and
+# the path of its phase along the axis
+_STRENGTH = 2 * np.pi * DRIVE_HZ / SPEED * 6e-3**2 / (4 * DISTANCE_M**2)
+BEND = _STRENGTH / np.tan(_STRENGTH * DISTANCE_M)
+STRETCH = (1 + DISTANCE_M / np.hypot(DISTANCE_M, 6e-3)) / 2
 
 
 @dataclass(frozen=True)
@@ -87,6 +92,20 @@ def pattern(theta: Vector, frequency_hz: Vector, radius_m: float, edge: str) -> 
     shape: Vector = np.asarray(2 * j1(safe) / safe)
     signed: Vector = shape * factor[:, None]
     return signed
+
+
+def face_s(theta: Vector, radius_m: float, edge: str) -> Vector:
+    """By how much the bent wave is heard later on a turned face than on a straight one, shape (n,).
+
+    First order in the bend: <S²>, <V²> and <S> over the disc under exp(j x S), by Bessel functions (derived).
+    """
+    k = 2 * np.pi * DRIVE_HZ / SPEED
+    x = np.where(theta == 0, 1e-6, k * radius_m * np.sin(theta))
+    j2 = jv(2, x)
+    deep = np.cos(theta) ** 2 * (2 * j1(x) / x - 6 * j2 / x**2) + 2 * j2 / x**2
+    slope = {"rigid": 0 * theta, "soft": -np.tan(theta), "unbaffled": -np.tan(theta / 2)}[edge]
+    lean = radius_m * BEND * (np.sin(theta) - slope * np.cos(theta)) * (-2 * j2 / x) / k
+    return np.asarray(((radius_m**2 * BEND / 2 * deep + lean) / (2 * j1(x) / x) - radius_m**2 * BEND / 4) / SPEED)
 
 
 def comb(lines: Vector) -> Vector:
@@ -164,9 +183,9 @@ def _observed(
     theta = np.array([p.theta for p in poses])
     frequencies = np.concatenate([c.frequencies_hz, c.side_lines_hz])
     n = frequencies / DRIVE_HZ
-    turned = theta - truth.angle_zero - aside / DISTANCE_M
+    turned = theta - truth.angle_zero - aside * BEND
     level = truth.strength_v * comb(n) * pattern(turned, frequencies, truth.radius_m, truth.edge)
-    level = level * np.exp(-((aside[:, None] / beam_radius(n)) ** 2)) * (DISTANCE_M / (DISTANCE_M + along))[:, None]
+    level = level * np.exp(-((aside[:, None] / beam_radius(n)) ** 2)) * (1 / (1 + BEND * along))[:, None]
     if truth.null_line is not None:
         level[:, truth.null_line] *= 10 ** (-truth.null_db / 20)
     drift = 10 ** (truth.drift_db * order / max(1, count - 1) / 20)
@@ -175,7 +194,8 @@ def _observed(
     stepped = np.where(order >= truth.step_from, truth.step_m, 0.0)
     warm = TEMPERATURE_C + truth.warming_k * order / count
     speed = SPEED + 3.071 * (warm - TEMPERATURE_C)  # slope at 20 °C, IAPWS-95
-    arrival = (DISTANCE_M + along + stepped) / speed + truth.jitter_s * rng.standard_normal(count)
+    path = DISTANCE_M + STRETCH * along + BEND * aside**2 / 2 + stepped
+    arrival = path / speed + face_s(turned, truth.radius_m, truth.edge) + truth.jitter_s * rng.standard_normal(count)
     turns = np.exp(-2j * np.pi * np.outer(arrival, frequencies)).astype(np.complex128)
     wave = level * turns
     wave = wave * (1 + truth.echo_level * np.exp(-2j * np.pi * frequencies * truth.echo_delay_s))
