@@ -12,7 +12,7 @@ from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from time import monotonic
 
-from drivers.errors import Cancelled, LinkLost, LinkTimeout
+from drivers.errors import Cancelled, LinkLost, LinkTimeout, ProtocolError
 from drivers.framing import Inbox
 
 SLICE_S = 0.05  # how long a wait goes on before it looks whether it was cancelled
@@ -188,8 +188,15 @@ class Link(ABC):
         with memoryview(body) as view:
             while at < length:
                 at += self._receive_into(view[at:], self._slice(deadline, None))
-        while self._inbox.line() is None:
+        rest = self._inbox.line()
+        while rest is None:
             self._inbox.feed(self._receive(self._slice(deadline, None)))
+            rest = self._inbox.line()
+        if rest:
+            self._out_of_step = True
+            raise ProtocolError(
+                f"after a block came {rest[:20]!r} instead of an end of line: it is longer than it says"
+            )
         self.transcript.add("<", f"block of {length} bytes".encode())
         return body
 
@@ -209,9 +216,12 @@ class Link(ABC):
             raise Cancelled(f"waiting for {self.address} was ended")
         left = deadline - monotonic()
         if left <= 0:
-            self._out_of_step = True
-            raise LinkTimeout(f"{self.address} did not reply in time; is it switched on, and speaking this protocol?")
+            raise self._late()
         return min(left, SLICE_S)
+
+    def _late(self) -> LinkTimeout:
+        self._out_of_step = True
+        return LinkTimeout(f"{self.address} did not reply in time; is it switched on, and speaking this protocol?")
 
     def _lost(self, why: str) -> LinkLost:
         self._out_of_step = True

@@ -10,7 +10,7 @@ import re
 import socket
 from typing import Any
 
-from drivers.errors import CannotConnect
+from drivers.errors import CannotConnect, ProtocolError
 from drivers.link import Link
 
 SOCKET_RESOURCE = re.compile(r"^TCPIP\d*::([^:]+)::(\d+)::SOCKET$", re.IGNORECASE)
@@ -101,10 +101,25 @@ class VisaLink(Link):
                 self._inbox.feed(resource.read_bytes(2 if not len(self._inbox) else 1))
                 length = self._inbox.block_length()
             body = bytearray(resource.read_bytes(length, chunk_size=max(length, 1)))
-            resource.read_bytes(1)  # the end of line
+            self._end_of_block(resource)
+        except pyvisa.VisaIOError as error:
+            if error.error_code == pyvisa.constants.StatusCode.error_timeout:
+                raise self._late() from error
+            raise self._lost(f"a block did not come whole ({error})") from error
         except (pyvisa.Error, OSError) as error:
             raise self._lost(f"a block did not come whole ({error})") from error
+        except ProtocolError:
+            self._out_of_step = True
+            raise
         finally:
             resource.read_termination = before
         self.transcript.add("<", f"block of {length} bytes".encode())
         return body
+
+    def _end_of_block(self, resource: Any) -> None:
+        """The end of line, one byte or two."""
+        end = bytes(resource.read_bytes(1))
+        if end == b"\r":
+            end = bytes(resource.read_bytes(1))
+        if end != b"\n":
+            raise ProtocolError(f"a block ends with {end!r} instead of an end of line: it is longer than it says")

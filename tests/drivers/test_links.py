@@ -68,6 +68,36 @@ class LinkSuite:
             link.write("DATA?")
             with pytest.raises(ProtocolError, match="a block was expected"):
                 link.read_block()
+            assert not link.in_step  # what else comes of that reply must not answer the next question
+
+    def test_a_block_may_end_with_two_characters(self) -> None:
+        with self.link(Script({b"DATA?": b"#13abc\r\n", b"A?": b"7\n"})) as link:
+            for _ in range(2):
+                link.write("DATA?")
+                assert bytes(link.read_block()) == b"abc"
+            assert link.query("A?") == "7"
+
+    def test_a_block_that_comes_byte_by_byte_is_put_together(self) -> None:
+        with self.link(Script({b"DATA?": [bytes([b]) for b in b"#15a\nb\r#\n"]})) as link:
+            link.write("DATA?")
+            assert bytes(link.read_block()) == b"a\nb\r#"
+
+    @pytest.mark.parametrize("head", [b"#", b"#2", b"#25", b"#210", b"#210abc", b"#13abc"])
+    def test_a_block_that_stops_anywhere_is_a_reply_that_did_not_come(self, head: bytes) -> None:
+        with self.link(Script({b"DATA?": head, b"*IDN?": b"me\n"})) as link:
+            link.write("DATA?")
+            with pytest.raises(LinkTimeout, match="did not reply in time"):
+                link.read_block(self.fast_timeout_s)
+            assert not link.in_step
+            link.reconnect()
+            assert link.query("*IDN?") == "me"
+
+    def test_a_block_longer_than_it_says_is_not_cut_off_in_silence(self) -> None:
+        with self.link(Script({b"DATA?": b"#13abcdef\n"})) as link:
+            link.write("DATA?")
+            with pytest.raises(ProtocolError, match="longer than it says"):
+                link.read_block()
+            assert not link.in_step
 
     def test_a_reply_that_does_not_come_puts_the_link_out_of_step_until_reconnected(self) -> None:
         with self.link(Script({b"*IDN?": b"me\n"})) as link:
