@@ -43,11 +43,13 @@ class ScpiInstrument:
             raise
 
     def close(self) -> None:
-        """Leave the instrument safe and close the link; a dead link is no reason to fail."""
+        """Leave the instrument safe, its panel free, and close the link; a dead link is no reason to fail."""
         try:
             if not self.link.in_step:
                 self.link.reconnect()
             self.make_safe()
+            if self.profile.panel is not None:
+                self.link.write(self.profile.panel)
         except DriverError:
             self.link.transcript.add("!", b"could not be left in its safe state")
         finally:

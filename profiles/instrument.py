@@ -104,6 +104,9 @@ class Instrument(Profile):
     identify: str = Field(default="*IDN?", description="the identity question")
     timeout_s: Positive = 5.0
     terminator: Literal["\n", "\r\n", "\r"] = "\n"
+    panel: str | None = Field(
+        default=None, description="sent last, so that the front panel can be used again; left out: nothing is"
+    )
     has_error_queue: bool = Field(default=True, description="answers SYSTem:ERRor?")
     commands: dict[str, str] = Field(default_factory=dict)
     scope: ScopeLimits | None = None

@@ -2,6 +2,7 @@
 
 from collections.abc import Iterator
 from contextlib import ExitStack, contextmanager
+from time import monotonic, sleep
 from typing import Any
 
 import pytest
@@ -74,6 +75,18 @@ def test_opening_switches_the_source_off_and_so_does_the_end() -> None:
             instruments.generator.output(True)
             assert driving(generator)
         assert not driving(generator)
+
+
+def test_the_panel_is_given_back_last() -> None:
+    generator = GeneratorScript()
+    with bench_of(generator) as bench:
+        with opened(bench):
+            assert b"SYSTem:LOCal" not in generator.heard
+        deadline = monotonic() + 5
+        while b"SYSTem:LOCal" not in generator.heard and monotonic() < deadline:
+            sleep(0.01)  # the last word of a connection that is closed already
+    assert generator.heard[-1] == b"SYSTem:LOCal"
+    assert generator.heard[-2].startswith(b"OUTPut")  # and before that the source is off
 
 
 def test_an_exception_switches_the_source_off() -> None:

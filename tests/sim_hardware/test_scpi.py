@@ -115,6 +115,7 @@ TRANSCRIPTS: list[tuple[str, bytes, bytes, Sequence[bytes]]] = [
      b"*IDN?;*ESE?\n", b"QUIET BASIN,TEST,0001,1.0\n", (b"-440",)),
     ("a definite-length block among replies", b"*ESE?;DATA?;*ESE?\n", b"0;#16a;b\n#c;0\n", ()),
     ("version", b"SYSTEM:VERSION?\n", b"1999.0\n", ()),
+    ("panel", b"SYST:LOC;:SYSTEM:ERROR?\n", b'0,"No error"\n', ()),
     ("self-test", b"*TST?\n", b"0\n", ()),
 ]  # fmt: skip
 
