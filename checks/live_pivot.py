@@ -25,6 +25,7 @@ ANGLE_MATTERS = 2e-3  # rad: the element looks at the source under another angle
 SURE = 2.0  # standard uncertainties that are taken off before an offset is said to matter
 NEPER_DB = 20 / log(10)
 FACE_U = 0.25  # of a²/R: the edge behaviour (a²/4R either way) and a radius known within some 20 %
+LOBE = 3.0  # of x = k a sin(angle), where a main lobe has nearly ended
 UNSURE = 0.3  # of the correction for the face, point by point: it grows towards a null that is not quite where thought
 NULL_U, WEAK = 0.15, 0.05  # of a²/R; and the least level that counts as one
 AVERAGED, SUDDEN_C = 10, 0.02  # points; and what is no slow change of the water
@@ -82,8 +83,13 @@ class PivotCheck:
             wave_radius(c),
             c.planned_points,
             scale_u=hypot(c.speed_u, SOURCE_U * 2 * (1 - stretch)),
-            face_u_m=FACE_U * c.nominal_radius_m**2 * abs(self._wave.bend),
         )
+
+    def _face_u_m(self) -> float:
+        """How well that is known, as an offset z: the worse, the farther the angles go down the main lobe."""
+        c = self._c
+        x = min(float(self._wave.wavenumber[0]) * c.nominal_radius_m * sin(self._largest), LOBE)
+        return FACE_U * c.nominal_radius_m**2 * abs(self._wave.bend) * (1 + (x / 2.5) ** 2)
 
     def _face(self, theta: float) -> float:
         """What the face of an element as in the profile hears too late, s; its edge in the middle of what may be."""
@@ -112,11 +118,13 @@ class PivotCheck:
             return changes
         theta, face = seen.commanded.theta, self._face(seen.commanded.theta)
         time = self._at_first_temperature(arrival, seen) - face
-        arrived = Arrived(theta, time, hypot(arrival.standard_uncertainty_s, self._unsure(face, seen)), seen.index)
+        sigma = hypot(arrival.standard_uncertainty_s, self._unsure(face, seen))
+        arrived = Arrived(theta, time, sigma, seen.index)
         before = self._fit.points
         stepped = self._steps.take(self._fit, arrived)
         self._largest = max(self._largest, abs(theta))
         if stepped or (self._fit.points > before and due(self._fit.points)):
+            self._fit.face_u_m = self._face_u_m()
             self._estimate = self._fit.estimate()
             changes += self._steps.say(self._fit, self._estimate, seen.index)
             changes += self._offset.now(self._finding(seen.index), seen.index)

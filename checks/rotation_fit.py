@@ -142,7 +142,12 @@ class _Plane:
         unsure = NEAR_NULL * late(0.0, 0.0)
         sigma = np.hypot(r.arrival_sigma_s[rows], unsure)
         time = (r.arrival_s - self.travel_s)[rows]
-        return fit_pivot(theta, time, sigma, r.order[rows], self.speed_m_s, late)
+        first = fit_pivot(theta, time, sigma, r.order[rows], self.speed_m_s, late)
+        if first is None:
+            return None
+        # what jitters with the trigger is the same for all, and must not be taken for a matter of weights
+        jitter = sqrt(max(first.residual_sd_s**2 - float(np.median(sigma**2)), 0.0))
+        return fit_pivot(theta, time, np.hypot(sigma, jitter), r.order[rows], self.speed_m_s, late)
 
     def _late(self, theta: Vector, wave: Wave, fit: RadiusFit, x_m: float, z_m: float) -> Vector:
         """What the real wave adds to the arrival of a plane one, s, shape (n,)."""
