@@ -59,7 +59,8 @@ def test_intervals_cover_the_truth_as_often_as_they_say(common: float) -> None:
     wanted = low_passed()
     hit = np.zeros(N)
     for _ in range(repeats):
-        own, shared = rng.standard_normal((2, F.size)), rng.standard_normal((2, 1))
+        own = rng.standard_normal((2, F.size))
+        shared = rng.standard_normal((2, 1))
         drawn = np.sqrt(common) * shared + np.sqrt(1 - common) * own
         assert nominal.phase_rad is not None
         real = sensitivity_of(
@@ -69,7 +70,7 @@ def test_intervals_cover_the_truth_as_often_as_they_say(common: float) -> None:
         found = deconvolve(volts, INTERVAL, NOISE_V, nominal, LOW, LENGTH)
         hit += np.abs(found.pressure_pa - wanted) <= 1.959964 * found.standard_u_pa
     # any of 400 samples out of these bounds by chance: 400 x 2e-6, under 0.1 %
-    low, high = binom.ppf([1e-6, 1 - 1e-6], repeats, 0.95)
+    low, high = (float(binom.ppf(q, repeats, 0.95)) for q in (1e-6, 1 - 1e-6))
     assert low <= hit.min()
     assert hit.max() <= high
     assert hit.mean() / repeats == pytest.approx(0.95, abs=0.02)

@@ -1,4 +1,4 @@
-"""A sensor's table with phase, uncertainty and either unit, and what follows the element; each wrong value in a line."""
+"""A sensor's table with phase, uncertainty, either unit and loading; each wrong value is told in one line."""
 
 from __future__ import annotations
 
