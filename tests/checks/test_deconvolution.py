@@ -73,7 +73,8 @@ def test_intervals_cover_the_truth_as_often_as_they_say(common: float) -> None:
     low, high = (float(binom.ppf(q, repeats, 0.95)) for q in (1e-6, 1 - 1e-6))
     assert low <= hit.min()
     assert hit.max() <= high
-    assert hit.mean() / repeats == pytest.approx(0.95, abs=0.02)
+    # wholly correlated samples leave 1.1 % on the mean; four of these
+    assert hit.mean() / repeats == pytest.approx(0.95, abs=0.044)
 
 
 @pytest.mark.parametrize("common", [0.0, 1.0])
