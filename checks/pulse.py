@@ -101,7 +101,7 @@ def pulse_of(pressure_pa: Floats, interval_s: float, medium: Medium) -> Pulse:
 def pulse_uncertainty(draws_pa: Floats, interval_s: float, medium: Medium) -> Pulse:
     """Standard uncertainty of each quantity: standard deviation over drawn records, shape (draws, n) (JCGM 101).
 
-    Density, speed and depth are taken as exact: they add less than 0.1 % in water.
+    Density, speed and depth are taken as exact; what is not known of them is to be added.
 
     Raises:
         MeasurementError: fewer than 50 draws, which would leave the uncertainty itself more than 10 % uncertain.
