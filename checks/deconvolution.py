@@ -18,6 +18,8 @@ from checks.sensitivity import Response, Sensitivity, at
 
 Floats = NDArray[np.float64]
 Complexes = NDArray[np.complex128]
+# over the mean power of noise in a line, which is exponential: of 10,000 lines of noise one is above by chance in 50
+CLEAR = 13.0
 BLOCK = 64  # table lines propagated at a time, which bounds the memory
 
 
@@ -129,6 +131,20 @@ def monte_carlo(
         noisy = rfft(volts + noise_v * rng.standard_normal(volts.size), d.length)
         out[i] = irfft(noisy * d.inverse * np.exp(-shift[:, 0] - 1j * shift[:, 1]), d.length)[: volts.size]
     return out
+
+
+def clear_up_to(volts: Floats, interval_s: float, noise_v: float, table: Sensitivity) -> float:
+    """Highest frequency, within the table, at which the record stands out of the noise, Hz; to put a low-pass above.
+
+    Raises:
+        MeasurementError: there is none.
+    """
+    f = np.asarray(np.fft.rfftfreq(volts.size, interval_s), np.float64)
+    level = np.abs(rfft(volts)) ** 2
+    clear = (level > CLEAR * noise_v**2 * volts.size) & (f > 0) & (f <= table.frequency_hz[-1])
+    if not clear.any():
+        raise MeasurementError("at no frequency of the sensitivity table is the signal clear of the noise")
+    return float(f[np.flatnonzero(clear)[-1]])
 
 
 def divide_by_one(volts: Floats, table: Sensitivity, frequency_hz: float) -> Floats:

@@ -10,7 +10,7 @@ import numpy as np
 
 from acquire.report import figures
 from acquire.report.page import Picture, findings, page, picture, section, table
-from acquire.results import raster, rotation
+from acquire.results import pressure, raster, rotation
 from acquire.results.quantity import Quantity, written
 from acquire.results.summary import SHOWN, conditions
 from acquire.store import StoredScan
@@ -27,6 +27,12 @@ LISTED = (
     "share of the peak read",
     "positive peak",
     "negative peak",
+    "positive peak pressure",
+    "negative peak pressure",
+    "pulse-pressure-squared integral",
+    "pulse duration",
+    "acoustic-working frequency",
+    "pulse-intensity integral",
 )
 
 
@@ -50,6 +56,7 @@ def report(stored: StoredScan) -> str:
         quantities = raster.quantities(result, c)
         usable = c.frequencies_hz
         parts = sections(result)
+    quantities += pressure.quantities(stored, seen)
     return page(
         stored.job.scan.title or stored.job.scan.name,
         subtitle(stored),

@@ -9,7 +9,11 @@ from typing import Any
 from acquire.results.quantity import Quantity, written
 from acquire.store import StoredScan
 
-SHOWN = {"m": ("mm", 1e3), "deg": ("°", 1.0), "dB": ("dB", 1.0), "V": ("mV", 1e3), "1": ("", 1.0)}
+SHOWN = {"m": ("mm", 1e3), "deg": ("°", 1.0), "dB": ("dB", 1.0), "V": ("mV", 1e3), "1": ("", 1.0)} | {
+    "Pa": ("kPa", 1e-3),
+    "s": ("µs", 1e6),
+    "Hz": ("MHz", 1e-6),
+}
 
 
 def quantities_of(stored: StoredScan) -> list[Quantity]:
@@ -22,10 +26,14 @@ def quantities_of(stored: StoredScan) -> list[Quantity]:
     if c.scan_type == "rotation":
         from acquire.results import rotation
 
-        return rotation.quantities(rotation.rotation_results(seen, c), c)
-    from acquire.results import raster
+        found = rotation.quantities(rotation.rotation_results(seen, c), c)
+    else:
+        from acquire.results import raster
 
-    return raster.quantities(raster.raster_result(seen, c), c)
+        found = raster.quantities(raster.raster_result(seen, c), c)
+    from acquire.results import pressure
+
+    return found + pressure.quantities(stored, seen)
 
 
 def as_json(stored: StoredScan, quantities: Sequence[Quantity]) -> str:
