@@ -31,6 +31,7 @@ from checks.radius import (
     radii_from_angles,
     told_apart,
 )
+from checks.uncertainty import Input
 
 Vector = NDArray[np.float64]
 LEVELS_DB = (-3.0, -6.0)
@@ -44,12 +45,23 @@ NEAR_NULL = 0.1  # of an arrival's correction for the face, taken as known no be
 
 
 @dataclass(frozen=True)
+class Doubt:
+    """Something of the wave that is not known: as it was taken, and what one standard uncertainty does to the radii."""
+
+    what: str
+    unit: str
+    given: Input
+    radius_moved_m: Vector
+
+
+@dataclass(frozen=True)
 class PlaneResult:
     """All that one plane of rotation gives.
 
     Attributes:
         response: as measured. fitted: as a plane wave would have given it with the element centre on the axis.
         speed_u: relative standard uncertainty of the speed of sound.
+        doubts: what is not known of the wave.
     """
 
     response: PlaneResponse
@@ -61,6 +73,7 @@ class PlaneResult:
     pivot: PivotEstimate | None
     speed_m_s: float
     speed_u: float
+    doubts: tuple[Doubt, ...] = ()
 
     @property
     def best(self) -> RadiusFit:
@@ -93,7 +106,7 @@ def fit_plane(measured: PlaneResponse, c: Circumstances, speed_m_s: float, delay
         wave = wave_of(c, speed_m_s, exponent=exponent)
     fits = plane.radii(wave, fits, pivot)
     fitted = plane.as_plane_wave(wave, fits[0], pivot)
-    fits, pivot = plane.with_doubts(fits, pivot, exponent, exponent_u)
+    fits, pivot, doubts = plane.with_doubts(fits, pivot, exponent, exponent_u)
     halves = _half_angles(fitted, fits[0], speed_m_s)
     return PlaneResult(
         response=plane.response,
@@ -105,6 +118,7 @@ def fit_plane(measured: PlaneResponse, c: Circumstances, speed_m_s: float, delay
         pivot=pivot,
         speed_m_s=speed_m_s,
         speed_u=c.speed_u,
+        doubts=doubts,
     )
 
 
@@ -223,16 +237,18 @@ class _Plane:
 
     def with_doubts(
         self, fits: list[RadiusFit], pivot: PivotEstimate | None, exponent: float, exponent_u: float
-    ) -> tuple[list[RadiusFit], PivotEstimate | None]:
-        """The best fit and the offset with what is not known of the wave as further uncertainty."""
+    ) -> tuple[list[RadiusFit], PivotEstimate | None, tuple[Doubt, ...]]:
+        """The best fit and the offset with what is not known of the wave as further uncertainty, and each doubt."""
         best, c = fits[0], self.c
         radius2, zero2 = np.zeros_like(best.radius_m), 0.0
         offset2 = np.zeros((2, 2))
         if pivot is not None:
             offset2 = c.speed_u**2 * np.outer([pivot.x_m, pivot.z_m], [pivot.x_m, pivot.z_m])
-        for wave in self._other_waves(exponent, exponent_u):
+        doubts = []
+        for what, unit, given, wave in self._other_waves(exponent, exponent_u):
             other_pivot = self.pivot(wave, best) if pivot is not None else None
             other = self._radius(wave, best, other_pivot)
+            doubts.append(Doubt(what, unit, given, other.radius_m - best.radius_m))
             radius2 += (other.radius_m - best.radius_m) ** 2
             zero2 += (other.angle_zero - best.angle_zero) ** 2
             if pivot is not None and other_pivot is not None:
@@ -246,9 +262,9 @@ class _Plane:
         )
         if pivot is not None:
             pivot = replace(pivot, covariance=pivot.covariance + offset2)
-        return in_doubt([doubted, *fits[1:]]), pivot
+        return in_doubt([doubted, *fits[1:]]), pivot, tuple(doubts)
 
-    def _other_waves(self, exponent: float, exponent_u: float) -> list[Wave]:
+    def _other_waves(self, exponent: float, exponent_u: float) -> list[tuple[str, str, Input, Wave]]:
         """Each one standard uncertainty from the wave that is taken: its source, its harmonics, its direction.
 
         How the surroundings of the face answer to a bent wave is not known; between a wave from the middle of the
@@ -256,12 +272,16 @@ class _Plane:
         """
         c, speed = self.c, self.speed_m_s
         wave = wave_of(c, speed, exponent=exponent)
-        facing = wave.bend + (1 / c.distance_m - wave.bend) / sqrt(3)
+        look = Input.within(wave.bend, abs(1 / c.distance_m - wave.bend))
+        radius = Input(c.source_radius_m, SOURCE_U * c.source_radius_m)
         return [
-            wave_of(c, speed, source=1 + SOURCE_U, exponent=exponent),
-            wave_of(c, speed, exponent=exponent + exponent_u),
-            replace(wave, facing=facing),
-        ]
+            ("source radius", "m", radius, wave_of(c, speed, source=1 + SOURCE_U, exponent=exponent)),
+            (
+                "exponent of the harmonics' beamwidth", "1", Input(exponent, exponent_u),
+                wave_of(c, speed, exponent=exponent + exponent_u),
+            ),
+            ("bend of the wave at the edge", "1/m", look, replace(wave, facing=wave.bend + look.u)),
+        ]  # fmt: skip
 
     def _radius_at_drive(self, fit: RadiusFit) -> float:
         """Of the lowest usable frequency."""

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from math import isfinite
 from pathlib import Path
 from typing import Any
 
@@ -62,6 +63,7 @@ def report(stored: StoredScan) -> str:
         subtitle(stored),
         section("Findings", findings(stored.findings())),
         section("Numbers", numbers(quantities)),
+        *budgets(quantities),
         *parts,
         section("Reference point", picture(_reference(stored, seen, usable))),
         section("Scan", table(("", ""), circumstances_rows(stored))),
@@ -94,6 +96,37 @@ def numbers(quantities: Sequence[Quantity]) -> str:
             value = written(q.value, q.standard_uncertainty, factor)
             rows.append((q.name, conditions(q), f"{value} {unit}" if q.value is not None else "none", q.method))
     return table(("quantity", "conditions", "value ± standard uncertainty", "method"), rows)
+
+
+def budgets(quantities: Sequence[Quantity]) -> list[str]:
+    """The uncertainty budget of every quantity that has one, as a table."""
+    parts = []
+    for q in quantities:
+        if q.budget is None:
+            continue
+        unit, factor = SHOWN.get(q.unit, (q.unit, 1.0))
+        rows: list[tuple[str, ...]] = [
+            (
+                row.source,
+                f"{row.given.value:.6g} {row.unit if row.unit != '1' else ''}".strip(),
+                f"{row.given.u:.2g}",
+                row.given.distribution,
+                f"{row.given.freedom:.0f}" if isfinite(row.given.freedom) else "∞",
+                f"{row.sensitivity:.3g}",
+                f"{row.u * factor:.2g} {unit}",
+            )
+            for row in q.budget.rows
+        ]
+        k = q.budget.coverage_factor()
+        rows.append(("combined", "", "", "", _freedom(q.budget.freedom), "", f"{q.budget.u * factor:.2g} {unit}"))
+        rows.append((f"expanded, 95 %, k = {k:.2f}", "", "", "", "", "", f"{k * q.budget.u * factor:.2g} {unit}"))
+        head = ("source", "value", "u", "distribution", "degrees of freedom", "sensitivity", "contribution")
+        parts.append(section(f"Uncertainty of the {q.name} ({conditions(q)})", table(head, rows)))
+    return parts
+
+
+def _freedom(value: float) -> str:
+    return f"{value:.0f}" if value < 1e4 else "∞"
 
 
 def _reference(stored: StoredScan, seen: Sequence[Observation], usable_hz: Any) -> Picture:

@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 from acquire.results.quantity import Quantity
 from checks.directivity import plane_responses
 from checks.observation import Circumstances, Observation
+from checks.radius_budget import mean_radius
 from checks.rotation_fit import PlaneResult, edge_words, fit_plane
 from checks.warmth import smoothed
 from checks.water import speed_of_sound
@@ -94,36 +95,16 @@ def _radii(r: PlaneResult, plane: dict[str, float]) -> list[Quantity]:
         told = f"mean of a_h3 and a_h6 as in IEC 62127-3; {CONVENTION}" if by.mean_m else "a level is not reached"
         u_angles = by.standard_uncertainty_m
         found += [Quantity("effective radius from half-angles", by.mean_m, "m", u_angles, at, told)]
-    radius, u = mean_radius(r)
-    found.append(
-        Quantity(
-            "mean effective radius",
-            radius,
-            "m",
-            u,
-            plane | {"edge": fit.edge},
-            f"weighted mean over frequency; {method}",
-        )
-    )
+    budget = mean_radius(r)
+    words = f"weighted mean over frequency; {method}"
+    at_edge = plane | {"edge": fit.edge}
+    found.append(Quantity("mean effective radius", budget.value, "m", budget.u, at_edge, words, budget))
     if r.law is not None:
         text = "a² = a0² + (b/f)² fitted to the radii"
         found.append(Quantity("effective radius at high frequency", r.law.radius_m, "m", r.law.radius_u_m, plane, text))
         b2, b2_u = r.law.term_m2_hz2, sqrt(float(r.law.covariance[1, 1]))
         found.append(Quantity("frequency term of the radius", b2, "m2 Hz2", b2_u, plane, f"b² in {text}"))
     return found
-
-
-def mean_radius(r: PlaneResult) -> tuple[float, float]:
-    """Weighted mean of the radii over frequency; what the frequencies have in common does not average out."""
-    fit = r.best
-    weight = 1 / np.maximum(fit.radius_u_m, 1e-4 * fit.radius_m) ** 2
-    weight = weight / weight.sum()
-    mean = float(weight @ fit.radius_m)
-    own = fit.radius_u_m**2 - fit.model_u_m**2
-    inner = float(weight**2 @ np.maximum(own, 0.0))
-    scatter = float(weight @ (fit.radius_m - mean) ** 2) / max(1, fit.radius_m.size - 1)
-    common = float(weight @ fit.model_u_m)
-    return mean, sqrt(max(inner, scatter) + common**2 + (r.speed_u * mean) ** 2)
 
 
 def _geometry(r: PlaneResult, plane: dict[str, float], circumstances: Circumstances) -> list[Quantity]:
