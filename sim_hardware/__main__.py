@@ -11,6 +11,8 @@ from collections.abc import Sequence
 from contextlib import ExitStack
 from pathlib import Path
 
+from threadpoolctl import threadpool_limits
+
 from profiles.errors import ProfileError
 from profiles.load import find, load_bench, load_instrument
 from sim_hardware.bank import Bank, BankError
@@ -72,6 +74,8 @@ def _run(given: argparse.Namespace, stack: ExitStack) -> None:
     bench = load_bench(given.bench)
     timeline = Timeline(given.speed)
     simulated = _simulate(given, timeline)
+    # on a busy machine threads of linear algebra that wait for each other made a capture of 0.1 s take 3 s
+    stack.enter_context(threadpool_limits(1, "blas"))
     loop = Loop(timeline, simulated.prepare)
     stack.callback(loop.close)
     Signals(loop)

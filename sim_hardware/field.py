@@ -95,17 +95,21 @@ def relative_pressure(shape: SourceShape, wavenumber: float, order: float, r: Re
 
 @lru_cache(maxsize=4096)
 def _as_bent(q: float, share: float) -> float:
-    """The q of a virtual source for which cot q - 1/q is `share` of that of the real one's."""
-    from scipy.optimize import brentq
+    """The q of a virtual source for which cot q - 1/q is `share` of that of the real one's: by halving, it is monotone.
 
+    A library's root finder would cost the first capture more time in being loaded than a client waits for it.
+    """
     if abs(q) < 1e-6 or abs(q) >= _NEAR_FIELD:
         return q
 
     def bend(at: float) -> float:
         return 1 / math.tan(at) - 1 / at
 
-    wanted = share * bend(abs(q))
-    return math.copysign(float(brentq(lambda at: bend(at) - wanted, 1e-9, abs(q))), q)
+    wanted, low, high = share * bend(abs(q)), 0.0, abs(q)
+    for _ in range(50):
+        middle = (low + high) / 2
+        low, high = (middle, high) if bend(middle) > wanted else (low, middle)
+    return math.copysign(high, q)
 
 
 def _density(shape: SourceShape, wavenumber: float, order: float, r: Real, z: Real) -> tuple[int, int]:

@@ -140,9 +140,14 @@ def test_results_and_report_of_the_command_line(stored: Path, tmp_path: Path) ->
     done = command("results", str(stored), "--json")
     document = json.loads(done.stdout)
     for q in document["quantities"]:
-        assert set(q) == {"name", "value", "unit", "standard_uncertainty", "conditions", "method"}
+        assert {"name", "value", "unit", "standard_uncertainty", "conditions", "method"} <= set(q)
     names = {q["name"] for q in document["quantities"]}
     assert {"directional response", "half-angle", "effective radius", "angle zero", "pivot offset"} <= names
+    radius = next(q for q in document["quantities"] if q["name"] == "mean effective radius")
+    square = sum(row["contribution"] ** 2 for row in radius["budget"])
+    assert square == pytest.approx(radius["standard_uncertainty"] ** 2)
+    assert radius["expanded_uncertainty"] == pytest.approx(radius["coverage_factor"] * radius["standard_uncertainty"])
+    assert {"positive peak pressure", "pulse duration", "acoustic-working frequency"} <= names
     assert "pivot.offset" in {f["code"] for f in document["findings"]}
     assert command("report", str(stored), "--out", str(tmp_path / "r.html")).returncode == 0
     page = (tmp_path / "r.html").read_text()

@@ -6,6 +6,8 @@ from collections.abc import Iterator
 from dataclasses import dataclass, field
 from functools import cached_property
 
+from threadpoolctl import threadpool_limits
+
 from acquire.judge import Judge
 from acquire.plan import AXIS_NUMBER, Plan, PlanPoint
 from acquire.prepare import circumstances_of, first_settings, plan_of
@@ -130,7 +132,12 @@ class Hand:
 
 
 def scanned(bench: Drawn, noiseless: bool = False) -> Scanned:
-    """Do the whole scan and judge it."""
+    """Do the whole scan and judge it, as the recorder does with one thread of linear algebra."""
+    with threadpool_limits(1, "blas"):
+        return _scanned(bench, noiseless)
+
+
+def _scanned(bench: Drawn, noiseless: bool) -> Scanned:
     hand = Hand(bench, noiseless)
     job = bench.job
     warmth = hand.temperature_c()

@@ -7,7 +7,8 @@ from scipy.stats import binom
 
 from tests.faults.truth import Edges, Verdict, verdicts
 
-FAMILY, BENCHES = 2, 50
+pytestmark = [pytest.mark.slow, pytest.mark.timeout(600)]
+FAMILY, BENCHES = 2, 40
 ONE_IN = 1e-4  # by chance, if the coverage is 92 %, which is still allowed
 
 
@@ -16,7 +17,6 @@ def found() -> list[Verdict | Edges]:
     return [one for number in range(BENCHES) for one in verdicts(FAMILY, number)]
 
 
-@pytest.mark.slow
 @pytest.mark.parametrize("name", ["mean effective radius", "pivot offset x", "pivot offset z", "angle zero"])
 def test_the_truth_lies_within_twice_the_stated_uncertainty(found: list[Verdict | Edges], name: str) -> None:
     of = [v for v in found if isinstance(v, Verdict) and v.name == name]
@@ -26,7 +26,6 @@ def test_the_truth_lies_within_twice_the_stated_uncertainty(found: list[Verdict 
     assert max(abs(v.pull) for v in of) > 1.0
 
 
-@pytest.mark.slow
 def test_half_angles_lie_within_what_they_state(found: list[Verdict | Edges]) -> None:
     # those of one bench have much in common, so benches count
     benches: dict[int, list[bool]] = {}
@@ -37,7 +36,6 @@ def test_half_angles_lie_within_what_they_state(found: list[Verdict | Edges]) ->
     assert sum(mostly) >= binom.ppf(ONE_IN, len(mostly), 0.92)
 
 
-@pytest.mark.slow
 def test_the_edge_behaviour_is_named_rightly_where_it_is_named(found: list[Verdict | Edges]) -> None:
     edges = [v for v in found if isinstance(v, Edges)]
     wrong = sum(e.said and not e.right for e in edges)

@@ -10,6 +10,7 @@ from math import degrees, pi
 from multiprocessing import get_context
 
 import numpy as np
+from threadpoolctl import threadpool_limits
 
 from checks.element import angle_at_level
 from checks.errors import MeasurementError
@@ -52,7 +53,8 @@ class Edges:
 def verdicts(family: int, number: int) -> list[Verdict | Edges]:
     """Scan one bench and compare; a bench on which nothing can be measured gives nothing."""
     try:
-        return list(_compared(scanned(drawn(number, family)), number))
+        with threadpool_limits(1, "blas"):
+            return list(_compared(scanned(drawn(number, family)), number))
     except MeasurementError:
         return []
 
