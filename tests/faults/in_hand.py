@@ -43,6 +43,7 @@ class Scanned:
     circumstances: Circumstances
     seen: list[Observation]
     changes: list[Change] = field(default_factory=list)
+    full_scale_v: float = 0.0
 
     @cached_property
     def results(self) -> list[PlaneResult]:
@@ -158,7 +159,7 @@ def _scanned(bench: Drawn, noiseless: bool) -> Scanned:
     if records:
         result.seen += judge.take(records, counts)[0]
     judge.finish()
-    result.changes = judge.changes
+    result.changes, result.full_scale_v = judge.changes, settings.full_scale_v
     return result
 
 
