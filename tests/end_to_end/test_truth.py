@@ -1,7 +1,7 @@
-"""Simulated benches whose truth is known: what comes out, and whether it lies within what is stated.
+"""Simulated benches whose truth is known, through the whole chain: what comes out.
 
-Each bench is scanned with ten seeds of noise; the truth must lie within twice the stated standard uncertainty in at
-least nine of them.
+How often the truth lies within what is stated is counted without sockets, on these benches with many seeds and on
+benches drawn at random, in `tests/faults`.
 """
 
 from dataclasses import dataclass
@@ -18,7 +18,8 @@ from acquire.store import open_stored
 from profiles.load import find, read
 from tests.end_to_end.running import SHORT_CAPTURE, request, running, wait_for_end
 
-SEEDS = 10
+SEEDS = 2
+FAR = 4.0  # standard uncertainties
 
 
 @dataclass(frozen=True)
@@ -65,7 +66,6 @@ def test_rotations_find_the_truth_within_what_they_state(name: str, tmp_path: Pa
     truth = BENCHES[name]
     bench = bench_file(truth, tmp_path / "bench.toml")
     rotation = {"span_deg": 80.0, "step_deg": 2.0}
-    inside: dict[str, list[bool]] = {}
     for seed in range(SEEDS):
         store = tmp_path / f"{seed}.zarr"
         with running(tmp_path / f"run-{seed}", str(bench), seed=seed) as on, Client(on.endpoint) as client:
@@ -96,9 +96,7 @@ def test_rotations_find_the_truth_within_what_they_state(name: str, tmp_path: Pa
             assert quantity.standard_uncertainty is not None
             error = quantity.value - true
             assert abs(error) <= allowed, f"seed {seed}: {key} off by {error:.3g}, allowed {allowed:.3g}"
-            inside.setdefault(key, []).append(abs(error) <= 2 * quantity.standard_uncertainty)
-    for key, verdicts in inside.items():
-        assert sum(verdicts) >= 0.9 * SEEDS, f"{key}: within twice its uncertainty for {sum(verdicts)} of {SEEDS} seeds"
+            assert abs(error) <= FAR * quantity.standard_uncertainty, f"seed {seed}: {key}"
 
 
 def piston_amplitude(x: np.ndarray, z: float, radius: float, frequency: float, speed: float) -> np.ndarray:
