@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
-from math import floor, hypot, inf, isfinite, sqrt
+from math import floor, hypot, inf, isfinite, log10, sqrt
 from typing import Literal
 
 import numpy as np
@@ -168,6 +168,23 @@ def drawn(
     widths = values[held:] - values[: count - held]
     first = int(np.argmin(widths))
     return Drawn(float(values.mean()), float(values.std(ddof=1)), float(values[first]), float(values[first + held]))
+
+
+def tolerance(u: float, digits: int = 2) -> float:
+    """Half a unit of the last of so many meaningful digits of a standard uncertainty (JCGM 101, 7.9.2)."""
+    if not (isfinite(u) and u > 0):
+        return 0.0
+    places = floor(log10(u)) - digits + 1
+    if round(u / 10.0**places) >= 10**digits:  # rounding carries: 0.0996 to two digits is 0.10
+        places += 1
+    return 0.5 * 10.0**places
+
+
+def validated(budget: Budget, found: Drawn, level: float = 0.95, digits: int = 2) -> bool:
+    """Whether both ends of the GUM's interval lie within the tolerance of the drawn one's (JCGM 101, 8.1.3)."""
+    half = budget.expanded(level)
+    apart = max(abs(budget.value - half - found.low), abs(budget.value + half - found.high))
+    return apart <= tolerance(budget.u, digits)
 
 
 def e_n(value: float, expanded_u: float, reference: float, reference_expanded_u: float) -> float:

@@ -2,12 +2,17 @@
 
 from __future__ import annotations
 
+from html import escape
+
 import numpy as np
 
 from acquire.report import figures
-from acquire.report.page import Picture, picture, section
+from acquire.report.page import Picture, picture, section, table
+from acquire.results.averaging import averaging_statement
 from acquire.results.raster import AXES, RasterResult, on_grid
 from checks.beam import Width
+
+AVERAGING = "Averaging over the face"
 
 
 def sections(result: RasterResult) -> list[str]:
@@ -16,7 +21,32 @@ def sections(result: RasterResult) -> list[str]:
     if len(result.axes) >= 2:
         pictures += [_map(result, which) for which in ("integral", "positive", "negative")]
     pictures += [_profile(result, axis, width) for axis, width in result.widths.items()]
-    return [section("Beam", *(picture(p) for p in pictures))]
+    return [section("Beam", *(picture(p) for p in pictures)), *_averaging(result)]
+
+
+def _averaging(result: RasterResult) -> list[str]:
+    """What the size of the element does to each harmonic, in a sentence and a table."""
+    told = f"<p>{escape(averaging_statement(result.averaging))}</p>"
+    if not result.averaging.biases:
+        return [section(AVERAGING, told)]
+    head = ("harmonic", "frequency", "axis", "width measured", "peak read low", "width read wide", "largest diameter")
+    rows = []
+    for h in result.averaging.biases:
+        least = "" if h.bias.resolved else "at least "
+        rows.append(
+            (
+                str(h.harmonic),
+                f"{h.frequency_hz / 1e6:.4g} MHz",
+                h.axis,
+                f"{h.bias.width6_m * 1e3:.3f} mm",
+                f"{least}{h.bias.low_db:.2f} dB",
+                f"{least}{100 * (h.bias.widening - 1):.1f} %",
+                f"{2e3 * h.largest_radius_m:.3f} mm",
+            )
+        )
+    return [
+        section("Averaging over the face", f"<p>{escape(averaging_statement(result.averaging))}</p>", table(head, rows))
+    ]
 
 
 def _map(result: RasterResult, which: str) -> Picture:

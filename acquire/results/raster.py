@@ -8,14 +8,19 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
+from acquire.results.averaging import Averaging, Line, averaging_of, averaging_quantities
 from acquire.results.quantity import Quantity
 from checks.averaging import averaged_share
 from checks.beam import Peak, Width, peak_of, width_of
+from checks.beam_axis import focus_of
+from checks.beam_plane import measured_shape
 from checks.errors import MeasurementError
 from checks.observation import Circumstances, Observation
 
 Array = NDArray[np.float64]
 AXES = "xyz"
+FOCUS = "largest pulse-pressure-squared integral"
+SEED = 20  # of the draws that make an uncertainty: the same scan gives the same numbers
 BEAMWIDTH = "-6 dB on the pulse-pressure-squared integral (IEC 61828)"
 
 
@@ -27,6 +32,8 @@ class RasterResult:
         places: shape (n, 3), metres. peak_v, trough_v, integral_v2s, noise_v: shape (n,), noise taken off the integral.
         amplitude: root of the integral, V s^½, and its standard uncertainty `sigma`, each shape (n,).
         widths: by axis name, along the line through the point nearest to the peak; or why there is none.
+        averaging: what the element does to each harmonic along each axis.
+        scatter_m: shape (3,), rms difference of reported and commanded positions.
     """
 
     axes: tuple[int, ...]
@@ -40,6 +47,8 @@ class RasterResult:
     peak: Peak | None
     widths: dict[str, Width | str]
     steps: tuple[float, ...]
+    averaging: Averaging
+    scatter_m: Array
 
 
 def raster_result(seen: Sequence[Observation], circumstances: Circumstances) -> RasterResult:
@@ -80,7 +89,18 @@ def raster_result(seen: Sequence[Observation], circumstances: Circumstances) -> 
         peak=peak,
         widths=widths,
         steps=steps,
+        averaging=averaging_of(points, _lines_through(places, amplitude, moving, scatter), circumstances),
+        scatter_m=scatter,
     )
+
+
+def _lines_through(places: Array, amplitude: Array, moving: list[int], scatter_m: Array) -> dict[str, Line]:
+    """Lines across the beam through the largest level, by name of their axis."""
+    found = {}
+    for axis in (i for i in moving if AXES[i] != "z"):
+        rows = np.nonzero(_level_with_the_peak(places, amplitude, [i for i in moving if i != axis]))[0]
+        found[AXES[axis]] = Line(rows, places[rows, axis], float(scatter_m[axis]))
+    return found
 
 
 def _peak(places: Array, amplitude: Array, moving: list[int]) -> Peak | None:
@@ -144,10 +164,52 @@ def quantities(result: RasterResult, circumstances: Circumstances) -> list[Quant
         if result.peak is None and not isinstance(width, str):
             found.append(Quantity("beam peak", width.peak_m, "m", None, {"axis": axis}, "top of the spline"))
     at = int(np.argmax(result.amplitude))
+    found += averaging_quantities(result.averaging) + beam_quantities(result)
     for name, heights in (("positive peak", result.peak_v), ("negative peak", result.trough_v)):
         method = "at the point with the largest pulse-pressure-squared integral; uncertainty from noise alone"
         found.append(Quantity(name, float(heights[at]), "V", float(result.noise_v[at]), {}, method))
     return found
+
+
+def beam_quantities(result: RasterResult) -> list[Quantity]:
+    """Area and shape of a plane across the beam; focal distance and depth of a line or plane along it."""
+    found = []
+    if result.axes[:2] == (0, 1):
+        x, y, grid = on_grid(result, result.amplitude)
+        try:
+            found += _shape(x, y, grid, on_grid(result, result.sigma)[2], result.scatter_m)
+        except MeasurementError as error:
+            found.append(Quantity("beam area", None, "m2", None, {}, str(error)))
+    if 2 in result.axes:
+        rows = _level_with_the_peak(result.places, result.amplitude, [i for i in result.axes if i != 2])
+        try:
+            focus = focus_of(result.places[rows, 2], result.amplitude[rows], result.sigma[rows])
+        except MeasurementError as error:
+            return [*found, Quantity("focal distance", None, "m", None, {}, str(error))]
+        u = float(np.hypot(focus.distance_u_m, result.scatter_m[2]))
+        found.append(
+            Quantity("focal distance", focus.distance_m, "m", u, {}, "largest pulse-pressure-squared integral")
+        )
+        u = float(np.hypot(focus.depth_u_m, np.sqrt(2) * result.scatter_m[2]))
+        found.append(Quantity("depth of focus", focus.depth_m, "m", u, {}, BEAMWIDTH))
+    return found
+
+
+def _shape(x: Array, y: Array, grid: Array, sigma: Array, scatter_m: Array) -> list[Quantity]:
+    down, along = np.gradient(grid, y, x)
+    # a point that stands off by so much reads another level
+    sigma = np.sqrt(sigma**2 + (along * scatter_m[0]) ** 2 + (down * scatter_m[1]) ** 2)
+    m = measured_shape(x, y, grid, sigma, np.random.default_rng(SEED))
+    s = m.shape
+    turn, turn_u = float(np.degrees(s.orientation)), float(np.degrees(m.orientation_u))
+    rows: list[tuple[str, float, str, float, dict[str, float | str]]] = [
+        ("beam area", s.area_m2, "m2", m.area_u_m2, {}),
+        ("beam centroid", s.centroid_m[0], "m", m.centroid_u_m[0], {"axis": "x"}),
+        ("beam centroid", s.centroid_m[1], "m", m.centroid_u_m[1], {"axis": "y"}),
+        ("ellipticity", s.ellipticity, "1", m.ellipticity_u, {}),
+        ("direction of the major axis", turn, "deg", turn_u, {}),
+    ]
+    return [Quantity(name, value, unit, u, where, BEAMWIDTH) for name, value, unit, u, where in rows]
 
 
 def on_grid(result: RasterResult, values: Array) -> tuple[Array, Array, Array]:

@@ -10,6 +10,7 @@ from acquire.results.quantity import Quantity, written
 from acquire.store import StoredScan
 
 SHOWN = {"m": ("mm", 1e3), "deg": ("°", 1.0), "dB": ("dB", 1.0), "V": ("mV", 1e3), "1": ("", 1.0)} | {
+    "m2": ("mm²", 1e6),
     "Pa": ("kPa", 1e-3),
     "s": ("µs", 1e6),
     "Hz": ("MHz", 1e-6),
@@ -62,6 +63,8 @@ def lines(quantities: Sequence[Quantity]) -> Iterator[str]:
         value = written(q.value, q.standard_uncertainty, factor)
         told = f"{value} {unit}".strip() if q.value is not None else f"none ({q.method})"
         yield f"{q.name:<34} {conditions(q):<44} {told}"
+        if q.name == "averaging" and q.value is not None:
+            yield f"  {q.method}"
 
 
 def conditions(q: Quantity) -> str:

@@ -85,6 +85,32 @@ def test_a_raster_is_sealed_and_its_replay_is_identical(tmp_path: Path) -> None:
     widths = [q for q in quantities_of(open_stored(store)) if q.name == "beamwidth"]
     assert len(widths) == 2
     assert all(q.value is not None and 0.5e-3 < q.value < 2e-3 for q in widths)
+    # two points and a half within the width are too few to tell of averaging, and that is said
+    told = next(q for q in quantities_of(open_stored(store)) if q.name == "averaging")
+    assert told.value is None
+    assert "steps of 0.5 mm are too large" in told.method
+
+
+def test_a_line_tells_plainly_what_averaging_does_to_each_harmonic(tmp_path: Path) -> None:
+    raster = {"directions": [{"axis": "x", "span_mm": 3.0, "step_mm": 0.06}], "order": "serpentine"}
+    store = tmp_path / "line.zarr"
+    with running(tmp_path / "bench", "focus-tank") as on:
+        ended = scanned(on, request("line-x", store, raster=raster, capture=SHORT_CAPTURE))
+    assert ended.state == "sealed"
+    assert " of 0.1 mm diameter reads the " in command("results", str(store)).stdout
+    found = quantities_of(open_stored(store))
+    losses = [q for q in found if q.name == "peak read low by averaging"]
+    assert len(losses) >= 5
+    values = [q.value or 0.0 for q in losses]
+    # the element is small beside the beam of the fundamental, and less so beside each harmonic's
+    assert 0 < values[0] < 0.1
+    assert all(
+        b > a - 2 * (q.standard_uncertainty or 0) for a, b, q in zip(values, values[1:], losses[1:], strict=False)
+    )
+    assert values[-1] > 2 * values[0]
+    assert next(q for q in found if q.name == "averaging").value in values
+    assert command("report", str(store), "--out", str(tmp_path / "line.html")).returncode == 0
+    assert "Averaging over the face" in (tmp_path / "line.html").read_text()
 
 
 def test_a_second_scan_is_refused_while_one_runs_and_a_stop_keeps_what_was_stored(bench: Running) -> None:
