@@ -44,9 +44,7 @@ def _averaging(result: RasterResult) -> list[str]:
                 f"{2e3 * h.largest_radius_m:.3f} mm",
             )
         )
-    return [
-        section("Averaging over the face", f"<p>{escape(averaging_statement(result.averaging))}</p>", table(head, rows))
-    ]
+    return [section(AVERAGING, told, table(head, rows))]
 
 
 def _map(result: RasterResult, which: str) -> Picture:

@@ -187,9 +187,7 @@ def beam_quantities(result: RasterResult) -> list[Quantity]:
         except MeasurementError as error:
             return [*found, Quantity("focal distance", None, "m", None, {}, str(error))]
         u = float(np.hypot(focus.distance_u_m, result.scatter_m[2]))
-        found.append(
-            Quantity("focal distance", focus.distance_m, "m", u, {}, "largest pulse-pressure-squared integral")
-        )
+        found.append(Quantity("focal distance", focus.distance_m, "m", u, {}, FOCUS))
         u = float(np.hypot(focus.depth_u_m, np.sqrt(2) * result.scatter_m[2]))
         found.append(Quantity("depth of focus", focus.depth_m, "m", u, {}, BEAMWIDTH))
     return found
