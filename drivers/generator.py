@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from drivers.errors import InstrumentError
+from drivers.errors import InstrumentError, ProtocolError
 from drivers.roles import Drive
 from drivers.scpi import ScpiInstrument
 
@@ -43,9 +43,12 @@ class BurstGenerator(ScpiInstrument):
 
         Raises:
             InstrumentError: it did not follow.
+            ProtocolError: its reply does not tell.
         """
         self.send("output", on=on)
         state = self.ask("output_state").strip().upper()
+        if state not in ("0", "1", "OFF", "ON"):
+            raise ProtocolError(f"the generator answered {state!r} when it was asked whether its output is on")
         if (state in ("1", "ON")) != on:
             wanted = "on" if on else "off"
             raise InstrumentError(f"the generator's output is {state!r} after it was switched {wanted}: do it by hand")

@@ -69,10 +69,12 @@ class IsoStage(MotionStage):
     def _state(self) -> tuple[str, dict[Axis, float]]:
         reply = self.link.read_line()
         match = REPORT.match(reply)
-        if not match:
-            raise ProtocolError(f"the stage answered {reply!r} to a request for its report")
-        values = dict(zip(ORDER, (float(v) for v in match[2].split(",")), strict=False))
-        return match[1], {axis: values[self._words[axis]] * unit_of(axis) for axis in self.axes}
+        try:
+            state, numbers = match.groups() if match else ("", "")
+            values = dict(zip(ORDER, (float(v) for v in numbers.split(",")), strict=False))
+            return state, {axis: values[self._words[axis]] * unit_of(axis) for axis in self.axes}
+        except (ValueError, KeyError) as error:
+            raise ProtocolError(f"the stage answered {reply!r} to a request for its report") from error
 
     def _read_report(self) -> Report:
         state, position = self._state()

@@ -6,7 +6,7 @@ from math import radians
 
 import pytest
 
-from drivers.errors import Cancelled, InstrumentError, InstrumentTimeout, OutOfLimits, WrongIdentity
+from drivers.errors import Cancelled, InstrumentError, InstrumentTimeout, OutOfLimits, ProtocolError, WrongIdentity
 from drivers.stage import MotionStage
 from drivers.stage_iso import IsoStage
 from drivers.stage_prefix import PrefixStage
@@ -234,3 +234,13 @@ def test_a_stage_is_stopped_on_closing_where_a_move_was_sent_off(family: str) ->
     with stage_on(kind, name, script) as stage:
         stage.start_move({"x": 1.5e-3})
     assert (b"!" if family == "iso" else b"ST") in b" ".join(script.heard)
+
+
+@pytest.mark.parametrize("report", [b"<Idle|MPos:1.5|FS:0,0>\n", b"<Idle|MPos:1.2.3,-,.|FS:0>\n", b"what?\n"])
+def test_iso_a_report_that_is_garbled_is_said(report: bytes) -> None:
+    script = IsoScript(IDLE, report)
+    with (
+        stage_on(IsoStage, "stage-iso", script) as stage,
+        pytest.raises(ProtocolError, match="to a request for its report"),
+    ):
+        stage.position()
