@@ -6,6 +6,7 @@ import tomllib
 from collections.abc import Iterator, Mapping
 from contextlib import contextmanager
 from pathlib import Path
+from typing import Any
 
 import tomli_w
 
@@ -16,9 +17,20 @@ from profiles.instrument import Role
 from profiles.load import find, load_bench, load_instrument
 
 
-def bench_file(folder: Path, shipped: str, profiles: Mapping[Role, str], over_tcp: bool = False) -> Path:
-    """A shipped bench with other profiles for some roles; `over_tcp` leaves no instrument on a serial line."""
+def bench_file(
+    folder: Path,
+    shipped: str,
+    profiles: Mapping[Role, str],
+    over_tcp: bool = False,
+    truth: Mapping[str, Mapping[str, Any]] | None = None,
+) -> Path:
+    """A shipped bench with other profiles for some roles, and some of the simulation's tables changed.
+
+    `over_tcp` leaves no instrument on a serial line.
+    """
     tables = tomllib.loads(find("bench", shipped).read_text("utf-8"))
+    for name, changes in (truth or {}).items():
+        tables["simulation"][name] |= changes
     for port, (role, attached) in enumerate(tables["instruments"].items(), 1):
         attached["profile"] = profiles.get(role, attached["profile"])
         if over_tcp:
@@ -29,9 +41,15 @@ def bench_file(folder: Path, shipped: str, profiles: Mapping[Role, str], over_tc
 
 
 @contextmanager
-def simulated(folder: Path, shipped: str, profiles: Mapping[Role, str], over_tcp: bool = False) -> Iterator[Bench]:
+def simulated(
+    folder: Path,
+    shipped: str,
+    profiles: Mapping[Role, str],
+    over_tcp: bool = False,
+    truth: Mapping[str, Mapping[str, Any]] | None = None,
+) -> Iterator[Bench]:
     """The simulator on free addresses for as long as the block; gives the bench that leads to it."""
-    path = bench_file(folder, shipped, profiles, over_tcp)
+    path = bench_file(folder, shipped, profiles, over_tcp, truth)
     with simulated_bench(path, folder, "--speed", "max") as reached:
         yield load_bench(reached)
 
