@@ -60,6 +60,8 @@ class PlaneResult:
 
     Attributes:
         response: as measured. fitted: as a plane wave would have given it with the element centre on the axis.
+        centre_s: shape (n,), arrival of the element centre after that at angle zero as in a plane wave: drift and what
+            the real wave does are taken off; NaN where no offset could be fitted.
         speed_u: relative standard uncertainty of the speed of sound.
         doubts: what is not known of the wave.
     """
@@ -71,6 +73,7 @@ class PlaneResult:
     by_angles: list[AngleRadius]
     law: RadiusLaw | None
     pivot: PivotEstimate | None
+    centre_s: Vector
     speed_m_s: float
     speed_u: float
     doubts: tuple[Doubt, ...] = ()
@@ -106,6 +109,7 @@ def fit_plane(measured: PlaneResponse, c: Circumstances, speed_m_s: float, delay
         wave = wave_of(c, speed_m_s, exponent=exponent)
     fits = plane.radii(wave, fits, pivot)
     fitted = plane.as_plane_wave(wave, fits[0], pivot)
+    centre = plane.centre(wave, fits[0], pivot)
     fits, pivot, doubts = plane.with_doubts(fits, pivot, exponent, exponent_u)
     halves = _half_angles(fitted, fits[0], speed_m_s)
     return PlaneResult(
@@ -116,6 +120,7 @@ def fit_plane(measured: PlaneResponse, c: Circumstances, speed_m_s: float, delay
         by_angles=radii_from_angles(fitted, halves, speed_m_s),
         law=fit_law(fits[0], c.speed_u),
         pivot=pivot,
+        centre_s=centre,
         speed_m_s=speed_m_s,
         speed_u=c.speed_u,
         doubts=doubts,
@@ -185,6 +190,14 @@ class _Plane:
         true = strong & (np.abs(read - expected) < np.minimum(allowed, half / 4))
         retimed = r.retimed(np.where(true, read, expected))
         return replace(self, response=replace(retimed, arrival_usable=true))
+
+    def centre(self, wave: Wave, fit: RadiusFit, pivot: PivotEstimate | None) -> Vector:
+        """Arrivals relative to angle zero, without drift and without what the real wave does, s, shape (n,)."""
+        r = self.response
+        if pivot is None:
+            return np.full(r.theta.size, np.nan)
+        steady = pivot.arrival_s + pivot.drift_s * pivot.place(r.order) + self.travel_s
+        return np.asarray(r.arrival_s - steady - self._late(r.theta, wave, fit, pivot.x_m, pivot.z_m))
 
     def radii(self, wave: Wave, fits: Sequence[RadiusFit], pivot: PivotEstimate | None) -> list[RadiusFit]:
         """The radii for each edge behaviour, best first, each with its own idea of what the face hears."""

@@ -38,7 +38,7 @@ def _response(r: PlaneResult) -> Picture:
     figure = figures.response_against_angle(
         np.degrees(r.response.theta),
         r.response.frequencies_hz[lines] / 1e6,
-        r.response.level_db()[:, lines],
+        r.fitted.level_db()[:, lines],
         np.degrees(theta),
         fitted_levels(r, theta, chosen.tolist()),
     )
@@ -52,7 +52,7 @@ def _surface(r: PlaneResult) -> Picture:
     frequency = r.response.frequencies_hz[lines]
     loci = null_loci(r, float(frequency.min()), float(frequency.max()))
     figure = figures.response_surface(
-        np.degrees(r.response.theta), frequency / 1e6, np.nan_to_num(r.response.level_db()[:, lines], nan=-99.0), loci
+        np.degrees(r.response.theta), frequency / 1e6, np.nan_to_num(r.fitted.level_db()[:, lines], nan=-99.0), loci
     )
     return Picture("Response over angle and frequency; dashed: nulls of the fitted element.", figures.png(figure))
 
@@ -111,15 +111,14 @@ def _arrival(r: PlaneResult) -> Picture:
         raise ValueError("no pivot was fitted")
     theta = np.linspace(p.theta.min(), p.theta.max(), 400)
     rows = p.arrival_usable
-    drift = pivot.drift_s * (p.order[rows] / max(1, int(p.order.max())) - 0.5)
     figure = figures.arrival_against_angle(
         np.degrees(p.theta[rows]),
-        (p.arrival_s[rows] - pivot.arrival_s - drift) * 1e9,
+        r.centre_s[rows] * 1e9,
         np.degrees(theta),
         pivot.arrival_at(theta, r.speed_m_s) * 1e9,
     )
     caption = (
-        f"Arrival against angle, drift taken off, and the fitted pivot offset: x = {pivot.x_m * 1e3:.3f} mm, "
-        f"z = {pivot.z_m * 1e3:.3f} mm."
+        f"Arrival against angle, without drift and bend of the wave, and the fitted pivot offset: "
+        f"x = {pivot.x_m * 1e3:.3f} mm, z = {pivot.z_m * 1e3:.3f} mm."
     )
     return Picture(caption, figures.png(figure))

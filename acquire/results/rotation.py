@@ -42,8 +42,8 @@ def quantities(results: Sequence[PlaneResult], circumstances: Circumstances) -> 
 
 
 def _levels(r: PlaneResult, plane: dict[str, float]) -> list[Quantity]:
-    level = r.response.level_db()
-    relative = r.response.sigma / np.maximum(np.abs(np.nan_to_num(r.response.amplitude)), 1e-300)
+    level = r.fitted.level_db()
+    relative = r.fitted.sigma / np.maximum(np.abs(np.nan_to_num(r.fitted.amplitude)), 1e-300)
     u = 20 / np.log(10) * np.hypot(relative, r.response.reference_sigma / np.abs(r.response.reference))
     found = []
     for line in np.nonzero(r.response.usable)[0]:
@@ -57,7 +57,7 @@ def _levels(r: PlaneResult, plane: dict[str, float]) -> list[Quantity]:
                     "dB",
                     float(u[i, line]) if np.isfinite(value) else None,
                     plane | {"frequency_hz": frequency, "angle_deg": round(float(np.degrees(theta)), 6)},
-                    "component in the gate over its mean at the reference points",
+                    "component in the gate over its mean at the reference points, as in a plane wave",
                 )
             )
     return found
