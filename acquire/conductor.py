@@ -16,7 +16,7 @@ from typing import TypeVar
 from msgspec import Raw
 
 from acquire.control import Control
-from acquire.header import StoreHeader, circumstances_from_mapping, read_attributes
+from acquire.header import StoreHeader, circumstances_from_mapping, read_attributes, seconds_since
 from acquire.messages import (
     Event,
     FindingChanged,
@@ -77,6 +77,7 @@ class Conductor:
         self._source = SourceSwitch(instruments.generator)
         self._reconnects = 0
         self._there: tuple[PlanPoint, Where] | None = None  # where the stage stands before the first point
+        self._began = 0.0  # monotonic clock where the scan's own stands at zero
         self.done = 0
         self.planned = 0
 
@@ -128,8 +129,12 @@ class Conductor:
         self._publish(self._started(plan, exact.frequencies_hz.tolist()))
         dtype, samples = trace.counts.dtype.name, trace.counts.size
         header = self._header(settings)
+        self._began = monotonic()
+        before_s = 0.0 if stored is None else seconds_since(stored["started_utc"])
         with Recorder(self._store, header, exact, dtype, samples, len(plan), continue_store) as recorder:
             self.done = recorder.already_stored
+            # the scan's clock goes on after a break, and never back, whatever was done to the wall clock
+            self._began -= max(before_s, recorder.last_time_s)
             return self._visit(plan.points[self.done :], recorder, settings)
 
     def _header(self, settings: CaptureSettings) -> StoreHeader:
@@ -191,7 +196,7 @@ class Conductor:
             for at, point in enumerate(points):
                 self._between(recorder)
                 following = points[at + 1] if at + 1 < len(points) else None
-                record, trace = self._with_repairs(partial(self._point, point, following, started))
+                record, trace = self._with_repairs(partial(self._point, point, following))
                 if trace.full_scale_v != settings.full_scale_v:
                     raise DriverError("the vertical range changed during the scan: leave the panel alone")
                 recorder.put(record, trace.counts)
@@ -216,7 +221,7 @@ class Conductor:
         self._progress(started, first)
         return True
 
-    def _point(self, point: PlanPoint, following: PlanPoint | None, started: float) -> tuple[PointRecord, Trace]:
+    def _point(self, point: PlanPoint, following: PlanPoint | None) -> tuple[PointRecord, Trace]:
         if self._there and self._stands_at(point):
             before = self._there[1]
         else:
@@ -241,7 +246,7 @@ class Conductor:
             self._look_after_temperature(first=point.index == 0)
         trace = scope.read_samples()
         self._samples_due = False
-        return self._record(point, before, after, captured - started, trace), trace
+        return self._record(point, before, after, captured - self._began, trace), trace
 
     def _record(self, point: PlanPoint, before: Where, after: Where, time_s: float, trace: Trace) -> PointRecord:
         s = trace.scaling

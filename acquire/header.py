@@ -52,7 +52,12 @@ def checksum(profile: Mapping[str, Any]) -> str:
 
 def utc_now() -> str:
     """The time as ISO 8601."""
-    return datetime.now(UTC).isoformat(timespec="seconds")
+    return datetime.now(UTC).isoformat(timespec="milliseconds")
+
+
+def seconds_since(utc: str) -> float:
+    """By the wall clock, which may have been set meanwhile; `utc` as `utc_now` writes it."""
+    return (datetime.now(UTC) - datetime.fromisoformat(utc)).total_seconds()
 
 
 @dataclass(frozen=True)

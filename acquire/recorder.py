@@ -71,6 +71,7 @@ class Recorder:
         self._pipe: Channel
         self._process: subprocess.Popen[bytes]
         self.already_stored = self._expected = 0
+        self.last_time_s = 0.0  # of the last point that is there already
 
     def __enter__(self) -> Self:
         self._pipe, theirs = channel_pair()
@@ -84,7 +85,9 @@ class Recorder:
         theirs.close()
         try:
             self._pipe.send(pickle.dumps(self._setup))
-            self.already_stored = self._expected = int(self._wait_for(wire.READY, START_S))
+            stored, last_time_s = self._wait_for(wire.READY, START_S).split()
+            self.already_stored = self._expected = int(stored)
+            self.last_time_s = float(last_time_s)
         except BaseException:
             self.close()
             raise

@@ -64,7 +64,8 @@ class RecorderLoop:
         if already:
             put_attributes(self._path, {"finding_changes": []}, dropped=("points",))
             self._refeed(already)
-        self._pipe.send(wire.READY + str(stored).encode())
+        last_time_s = already.records[-1].time_s if already and already.records else 0.0
+        self._pipe.send(wire.READY + f"{stored} {last_time_s!r}".encode())
 
     def _prepare(self) -> Recovered | None:
         """A new store, or an old one whose points are all gathered."""

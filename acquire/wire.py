@@ -14,7 +14,7 @@ from checks.observation import Circumstances
 POINT = b"P"  # a record; its counts stand in the next slot of the ring
 FINISH = b"F"  # body b"1": seal, b"0": broken off
 # from the recorder
-READY = b"S"  # body: how many points are in the store already
+READY = b"S"  # body: how many points are in the store already, and when the last one was captured
 EVENTS = b"E"  # a list of encoded events, which the daemon passes on as they are
 FINDINGS = b"J"  # a list of findings, at which the daemon looks
 FREED = b"R"  # body: how many slots may be used again

@@ -5,6 +5,8 @@ from __future__ import annotations
 from collections.abc import Iterator, Mapping
 from contextlib import contextmanager
 from dataclasses import dataclass, field
+from datetime import UTC, datetime, timedelta
+from itertools import pairwise
 from pathlib import Path
 from typing import Any, NoReturn, cast
 
@@ -15,6 +17,7 @@ from acquire import conductor as module
 from acquire import source_switch
 from acquire.conductor import RECONNECTS, Conductor
 from acquire.control import Control
+from acquire.layout import put_attributes
 from acquire.messages import Notice, StateChanged
 from acquire.prepare import Job
 from acquire.store import open_stored
@@ -413,3 +416,25 @@ def test_a_way_to_the_first_point_through_a_keep_out_volume_is_not_gone(tmp_path
     with pytest.raises(PlanRefused, match=r"element at 30, 0, 120 mm.*'post': drive the stage to a free place"):
         conducted(fakes, tmp_path / "s.zarr", bench)[0].run()
     assert not any(line.startswith("move") for line in fakes.log)
+
+
+@pytest.mark.parametrize("since_s", [3600.0, 0.0, -7200.0], ids=["an hour's break", "no break", "clock set back"])
+def test_the_clock_of_a_scan_goes_on_after_a_break_and_never_back(tmp_path: Path, since_s: float) -> None:
+    store = tmp_path / "s.zarr"
+    assert not conducted(Fakes(stop_after=4), store)[0].run()
+    kept = [r.time_s for r in open_stored(store).records]
+    began = datetime.fromisoformat(open_stored(store).attributes["started_utc"])
+    assert began.utcoffset() == timedelta(0)
+    assert abs((datetime.now(UTC) - began).total_seconds()) < 60
+    earlier = (datetime.now(UTC) - timedelta(seconds=since_s)).isoformat()
+    put_attributes(store, {"started_utc": earlier})
+    assert conducted(Fakes(), store)[0].run(continue_store=True)
+    whole = open_stored(store)
+    times = [r.time_s for r in whole.records]
+    assert len(times) == 5 > len(kept)
+    assert times[: len(kept)] == kept
+    assert all(a < b for a, b in pairwise(times))
+    assert all(t >= since_s for t in times[len(kept) :])
+    assert times[-1] < max(since_s, times[len(kept) - 1]) + 60
+    assert whole.attributes["started_utc"] == earlier
+    assert whole.judged()[1] == whole.changes
