@@ -14,7 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from checks.observation import Circumstances, Observation, Pose
-from checks.quiet import Quiet
+from checks.quiet import Quiet, steps_of
 
 ROWS = 8
 Counts = NDArray[np.int8] | NDArray[np.int16]
@@ -69,7 +69,9 @@ class Reducer:
         self._block[rows] = inside
         self._quiet_block[rows] = whole[:, self._before]
         parts = (self._block @ self._matrix).astype(np.float64)
-        noise = self._quiet.look(self._quiet_block)
+        step = np.ones(ROWS)
+        step[rows] = steps_of(whole)
+        noise = self._quiet.look(self._quiet_block, step)
         parts -= noise.level[:, None] * self._leak
         self._block -= noise.level[:, None].astype(np.float32)
         square = np.einsum("ij,ij->i", self._block, self._block).astype(np.float64)

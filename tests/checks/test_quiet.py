@@ -2,10 +2,12 @@
 
 import numpy as np
 import pytest
+from hypothesis import given
+from hypothesis import strategies as st
 from numpy.typing import NDArray
 
 from checks.observation import Pose
-from checks.quiet import SHORTEST, Quiet
+from checks.quiet import SHORTEST, Quiet, steps_of
 from checks.reduce import ROWS, PointMeta, Reducer
 from tests.checks.synthetic import circumstances
 
@@ -55,3 +57,30 @@ def test_a_quiet_part_within_one_step_is_not_taken_for_silence() -> None:
     # a rectangular distribution one step wide has a standard deviation of 1/sqrt(12) of it (JCGM 100:2008, F.2.2.1)
     assert seen.component_noise_v == pytest.approx(np.full(16, 1e-3 / np.sqrt(12) * np.sqrt(2 / 1600)), rel=1e-5)
     assert seen.noise_rms_v == 0.0
+
+
+@pytest.mark.parametrize("low_bits", [0, 0x80, 0xFF])
+def test_eight_bits_that_are_padded_to_sixteen_mean_the_same_noise(low_bits: int) -> None:
+    c = circumstances()
+    here = Pose(0, 0, 0.12)
+    counts = np.zeros(2500, np.int16)
+    counts[800:2200] = np.rint(100 * np.sin(np.arange(1400) * 2 * np.pi * 2.25e6 * INTERVAL)).astype(np.int16)
+    padded = (counts << 8) | np.int16(low_bits)
+    meta = PointMeta(0, True, 0, here, here, here, 0.0, 20.0, 1e-3 / 256, 0.0, -32768, 32767)
+    seen = Reducer(c).reduce([padded], [meta])[0]
+    # as in the test above: the step is that of the eight bits, 1 mV, whatever fills the others
+    assert seen.component_noise_v == pytest.approx(np.full(16, 1e-3 / np.sqrt(12) * np.sqrt(2 / 1600)), rel=1e-5)
+
+
+@given(
+    rows=st.lists(st.lists(st.integers(-128, 127), min_size=70, max_size=70), min_size=1, max_size=8),
+    shift=st.integers(0, 8),
+)
+def test_a_step_is_never_more_than_what_two_samples_differ_by(rows: list[list[int]], shift: int) -> None:
+    codes = np.array(rows, np.int16)
+    padded = codes << shift
+    for row, step in zip(padded.astype(np.int64), steps_of(padded), strict=True):
+        apart = np.abs(np.subtract.outer(row, row))
+        divisor = int(np.gcd.reduce(apart, axis=None))  # the largest step that all of them are whole multiples of
+        assert step == (divisor & -divisor or 1)
+        assert step == 1 or step >= 1 << shift
