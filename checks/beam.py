@@ -65,6 +65,20 @@ def width_of(position_m: Vector, amplitude: Vector, sigma: Vector, level_db: flo
     return Width(left, right, peak, float(np.sqrt(variance + common**2)))
 
 
+def steps_u(position_m: Vector, amplitude: Vector, sigma: Vector, width: Width) -> float | None:
+    """What the steps of a line leave open of its width, m, as standard uncertainty; the points in ascending order.
+
+    A fifteenth of what leaving out every other point changes, as for a rule of the fourth order; None where too little
+    is left of the line for a width.
+    """
+    start = int(np.argmax(amplitude)) % 2
+    try:
+        coarse = width_of(position_m[start::2], amplitude[start::2], sigma[start::2])
+    except MeasurementError:
+        return None
+    return abs(coarse.width_m - width.width_m) / 15
+
+
 def _refined_top(curve: Any, near: float, x: Vector) -> float:
     from scipy.optimize import minimize_scalar
 

@@ -8,7 +8,7 @@ from math import atan, hypot, sqrt
 import numpy as np
 from numpy.typing import NDArray
 
-from checks.beam import width_of
+from checks.beam import steps_u, width_of
 from checks.errors import MeasurementError
 
 Vector = NDArray[np.float64]
@@ -44,11 +44,8 @@ def focus_of(z_m: Vector, amplitude: Vector, sigma: Vector) -> Focus:
     up = np.argsort(z_m)
     z, a, s = z_m[up], amplitude[up], sigma[up]
     whole = width_of(z, a, s)
-    start = int(np.argmax(a)) % 2
-    try:
-        coarse = width_of(z[start::2], a[start::2], s[start::2])
-        steps = abs(coarse.width_m - whole.width_m) / 15
-    except MeasurementError:
+    steps = steps_u(z, a, s, whole)
+    if steps is None:
         steps = float(np.median(np.diff(z))) / sqrt(12)
     distance, distance_u = _top(z, a, s, whole.peak_m)
     depth_u = hypot(whole.standard_uncertainty_m, steps)

@@ -13,7 +13,7 @@ with C = k a²/(4 z²) cot(phi/2) - 1/(F - z), w = k² a²/(8 z²), s = (1 + cos
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import lru_cache
 from math import pi, sqrt
 
@@ -22,11 +22,10 @@ from numpy.typing import NDArray
 
 from checks.element import Edge, jinc, obliquity
 from checks.observation import Circumstances
-from checks.wavefront import curvature
+from checks.wavefront import BEAM_EXPONENT, curvature
 
 Vector = NDArray[np.float64]
 Complex = NDArray[np.complex128]
-BEAM_EXPONENT = -0.75  # of the width of a harmonic: between quasi-linear -1/2 and linear -1
 FARTHEST = 4.0  # r² w beyond which nothing is known of the beam: no larger correction is made
 ACROSS = 6
 
@@ -46,6 +45,10 @@ class Wave:
     taper: Vector
     stretch: Vector
     facing: float
+
+    def at_lines(self, lines: NDArray[np.intp]) -> Wave:
+        """The wave at some of its frequencies only."""
+        return replace(self, wavenumber=self.wavenumber[lines], taper=self.taper[lines], stretch=self.stretch[lines])
 
     def at_centre(self, aside: Vector, along: Vector) -> Vector:
         """Amplitude at the element centre over that in the middle, shapes (n,) and (n,) to (n, K)."""
@@ -122,7 +125,7 @@ def face_delay(theta: Vector, aside: Vector, wave: Wave, radius_m: float, edge: 
 
     Counted from what is heard at normal incidence in the middle; a side lobe's turn by half a cycle is taken off.
     """
-    first = Wave(wave.wavenumber[:1], wave.bend, wave.taper[:1], wave.stretch[:1], wave.facing)
+    first = wave.at_lines(np.zeros(1, np.intp))
     size = np.array([radius_m])
     here = heard(theta, aside, first, size, edge)[:, 0] * np.sign(plain(theta, first, size, edge)[:, 0])
     middle = heard(np.zeros(1), np.zeros(1), first, size, edge)[0, 0]

@@ -13,14 +13,13 @@ from checks.averaging import W6_TO_W
 from checks.element import X_6DB
 from checks.errors import MeasurementError
 from checks.observation import Circumstances, Observation
-from checks.wavefront import WATER_M_S
+from checks.wavefront import BEAM_EXPONENT, WATER_M_S
 
 Vector = NDArray[np.float64]
 Complex = NDArray[np.complex128]
 USABLE_DB = 20.0  # signal over noise at angle zero that a line needs
 REPEATABILITY_FLOOR = 2e-4
 FEWEST_ANGLES = 5
-BEAM_EXPONENT = -0.75
 
 
 @dataclass(frozen=True)
@@ -66,13 +65,12 @@ class PlaneResponse:
         with np.errstate(divide="ignore", invalid="ignore"):
             return np.asarray(20 * np.log10(np.abs(self.amplitude / self.reference)))
 
-    def retimed(self, arrival_s: Vector) -> PlaneResponse:
-        """The same with other arrivals, shape (n,), believed everywhere: also where no arrival could be read."""
+    def retimed(self, arrival_s: Vector, usable: NDArray[np.bool_]) -> PlaneResponse:
+        """The same with other arrivals, shape (n,); levels are read at all of them, `usable` says which were read."""
         turn = np.exp(1j * (2 * np.pi * np.outer(arrival_s, self.frequencies_hz) - self.phase))
         amplitude = (self.components * turn).real
         sigma = np.hypot(self.noise_v, self.repeatability * np.abs(amplitude))
-        everywhere = np.ones(arrival_s.size, np.bool_)
-        return replace(self, amplitude=amplitude, sigma=sigma, arrival_s=arrival_s, arrival_usable=everywhere)
+        return replace(self, amplitude=amplitude, sigma=sigma, arrival_s=arrival_s, arrival_usable=usable)
 
 
 def plane_responses(seen: Sequence[Observation], circumstances: Circumstances) -> list[PlaneResponse]:

@@ -16,7 +16,7 @@ from checks.observation import Circumstances, Observation
 from checks.pivot import PivotEstimate, PivotFit
 from checks.standing import Standing, due
 from checks.water import speed_of_sound, speed_or
-from checks.wavefront import wave_radius
+from checks.wavefront import SOURCE_U, wave_radius
 from checks.wording import decibel, mhz, mm
 
 FEWEST = 12
@@ -29,7 +29,6 @@ LOBE = 3.0  # of x = k a sin(angle), where a main lobe has nearly ended
 UNSURE = 0.3  # of the correction for the face, point by point: it grows towards a null that is not quite where thought
 NULL_U, WEAK = 0.15, 0.05  # of a²/R; and the least level that counts as one
 AVERAGED, SUDDEN_C = 10, 0.02  # points; and what is no slow change of the water
-SOURCE_U = 0.03  # relative, of the source radius in a profile
 BEAM_KNOWN_DB = 20.0  # beyond this the Gaussian is no estimate of the beam
 
 

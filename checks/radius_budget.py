@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from math import inf, sqrt
+from math import sqrt
 
 import numpy as np
 
@@ -20,8 +20,8 @@ def mean_radius(r: PlaneResult) -> Budget:
     weight = weight / weight.sum()
     mean = float(weight @ fit.radius_m)
     inner = float(weight**2 @ own**2)
-    scatter = float(weight @ (fit.radius_m - mean) ** 2) / max(1, fit.radius_m.size - 1)
     lines = max(1, fit.radius_m.size - 1)
+    scatter = float(weight @ (fit.radius_m - mean) ** 2) / lines
     statistical = Input(mean, sqrt(max(inner, scatter)), freedom=lines if scatter > inner else fit.freedom)
     rows = [Contribution("fit: noise, repeatability, scatter between frequencies", "m", statistical, 1.0)]
     left2 = float(weight @ fit.model_u_m) ** 2
@@ -33,6 +33,6 @@ def mean_radius(r: PlaneResult) -> Budget:
     # what is left of the shared part is what another edge behaviour would give
     if left2 > NOTHING**2 and not r.edge_is_known:
         rows.append(Contribution("edge behaviour", "m", Input(0.0, sqrt(left2)), 1.0))
-    speed = Input(r.speed_m_s, r.speed_u * r.speed_m_s, freedom=inf)
+    speed = Input(r.speed_m_s, r.speed_u * r.speed_m_s)
     rows.append(Contribution("speed of sound: temperature and formula", "m/s", speed, mean / r.speed_m_s))
     return Budget("mean effective radius", "m", mean, tuple(rows))

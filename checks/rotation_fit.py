@@ -15,7 +15,7 @@ from math import sqrt
 import numpy as np
 from numpy.typing import NDArray
 
-from checks.bent_wave import BEAM_EXPONENT, Wave, face_delay, heard, plain, swing, wave_of
+from checks.bent_wave import Wave, face_delay, heard, plain, swing, wave_of
 from checks.directivity import HalfAngle, PlaneResponse, half_angle
 from checks.element import EDGES, Edge, response
 from checks.observation import Circumstances
@@ -32,11 +32,11 @@ from checks.radius import (
     told_apart,
 )
 from checks.uncertainty import Input
+from checks.wavefront import BEAM_EXPONENT, SOURCE_U
 
 Vector = NDArray[np.float64]
 LEVELS_DB = (-3.0, -6.0)
 ROUNDS = 3
-SOURCE_U = 0.03  # relative standard uncertainty of the source radius in a profile; common practice, no source
 EXPONENT_U = 0.087  # of the width of harmonics: -0.6 to -0.9, rectangular; between quasi-linear and linear
 CLEAR = 5.0  # of the noise: below it no arrival can be read
 FAR = 6.0  # standard deviations of the arrivals: farther off it is another half cycle, or none
@@ -181,23 +181,26 @@ class _Plane:
         What jitters with the trigger is in the arrival that was read, so that one is kept where it can be true.
         """
         r, c = self.response, self.speed_m_s
-        expected = pivot.arrival_s + pivot.drift_s * pivot.place(r.order) + pivot.arrival_at(r.theta, c)
-        expected = expected + self._late(r.theta, wave, fit, pivot.x_m, pivot.z_m) + self.travel_s
+        expected = self._besides(wave, fit, pivot) + pivot.arrival_at(r.theta, c)
         half = 0.5 / float(r.frequencies_hz[0])
         read = r.arrival_s + half * np.round((expected - r.arrival_s) / half)
         strong = np.abs(r.components[:, 0]) > CLEAR * r.noise_v[:, 0]
         allowed = np.maximum(FAR * pivot.residual_sd_s, np.abs(self._late(r.theta, wave, fit, 0.0, 0.0)))
         true = strong & (np.abs(read - expected) < np.minimum(allowed, half / 4))
-        retimed = r.retimed(np.where(true, read, expected))
-        return replace(self, response=replace(retimed, arrival_usable=true))
+        return replace(self, response=r.retimed(np.where(true, read, expected), true))
 
     def centre(self, wave: Wave, fit: RadiusFit, pivot: PivotEstimate | None) -> Vector:
         """Arrivals relative to angle zero, without drift and without what the real wave does, s, shape (n,)."""
         r = self.response
         if pivot is None:
             return np.full(r.theta.size, np.nan)
+        return np.asarray(r.arrival_s - self._besides(wave, fit, pivot))
+
+    def _besides(self, wave: Wave, fit: RadiusFit, pivot: PivotEstimate) -> Vector:
+        """All of an arrival but the swing of the centre in a plane wave, s, shape (n,)."""
+        r = self.response
         steady = pivot.arrival_s + pivot.drift_s * pivot.place(r.order) + self.travel_s
-        return np.asarray(r.arrival_s - steady - self._late(r.theta, wave, fit, pivot.x_m, pivot.z_m))
+        return np.asarray(steady + self._late(r.theta, wave, fit, pivot.x_m, pivot.z_m))
 
     def radii(self, wave: Wave, fits: Sequence[RadiusFit], pivot: PivotEstimate | None) -> list[RadiusFit]:
         """The radii for each edge behaviour, best first, each with its own idea of what the face hears."""
@@ -221,7 +224,7 @@ class _Plane:
         level = wave.at_centre(aside, along)
         lines = np.nonzero(r.usable)[0]
         theta = r.theta - fit.angle_zero
-        used = replace(wave, wavenumber=wave.wavenumber[lines], taper=wave.taper[lines], stretch=wave.stretch[lines])
+        used = wave.at_lines(lines)
         face = heard(theta, aside, used, fit.radius_m, fit.edge)
         middle = heard(np.zeros(1), np.zeros(1), used, fit.radius_m, fit.edge)
         late = face_delay(theta, aside, wave, self._radius_at_drive(fit), fit.edge, self.speed_m_s)

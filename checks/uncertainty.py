@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from math import floor, hypot, inf, isfinite, log10, sqrt
 from typing import Literal
@@ -43,14 +43,6 @@ class Input:
         if distribution not in HALF_WIDTHS:
             raise MeasurementError(f"{distribution} has no limits; allowed: {', '.join(HALF_WIDTHS)}")
         return cls(value, half_width / HALF_WIDTHS[distribution], distribution, freedom)
-
-    @classmethod
-    def repeated(cls, readings: Sequence[float]) -> Input:
-        """From independent repeats: their mean (JCGM 100, 4.2)."""
-        if len(readings) < 2:
-            raise MeasurementError("an uncertainty from repeats needs two of them or more")
-        u = float(np.std(readings, ddof=1)) / sqrt(len(readings))
-        return cls(float(np.mean(readings)), u, "normal", len(readings) - 1)
 
     def drawn(self, random: np.random.Generator, count: int) -> Vector:
         """Values by chance, shape (count,) (JCGM 101, 6.4)."""

@@ -7,6 +7,8 @@ from math import inf, pi, tan
 from checks.observation import Circumstances
 
 WATER_M_S = 1485.0  # curvature and width of a beam need not be known better
+BEAM_EXPONENT = -0.75  # of the width of a harmonic: between quasi-linear -1/2 and linear -1
+SOURCE_U = 0.03  # relative standard uncertainty of the source radius in a profile; common practice, no source
 FLAT = 0.05
 STRONGEST = 2.0  # over the distance; between the nulls of a near field the axis tells nothing of the wave beside it
 

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from acquire.results.averaging import Averaging, Line, averaging_of, averaging_quantities
 from acquire.results.quantity import Quantity
 from checks.averaging import averaged_share
-from checks.beam import Peak, Width, peak_of, width_of
+from checks.beam import Peak, Width, peak_of, steps_u, width_of
 from checks.beam_axis import focus_of
 from checks.beam_plane import measured_shape
 from checks.errors import MeasurementError
@@ -124,8 +124,7 @@ def _width(
 ) -> Width | str:
     """Along the line of points that runs in `axis` through the place of the largest level.
 
-    Its uncertainty holds the noise, the scatter of the stage, and what the spline makes of the steps: a fifteenth of
-    what leaving out every other point changes, for a rule of the fourth order.
+    Its uncertainty holds the noise, the scatter of the stage, and what the spline makes of the steps.
     """
     rows = _level_with_the_peak(places, amplitude, [i for i in moving if i != axis])
     order = np.argsort(places[rows, axis])
@@ -134,12 +133,9 @@ def _width(
         width = width_of(x, y, s)
     except MeasurementError as error:
         return str(error)
-    start = int(np.argmax(y)) % 2
-    try:
-        coarse = width_of(x[start::2], y[start::2], s[start::2]).width_m
-    except MeasurementError:
-        coarse = 2 * width.width_m
-    steps = abs(coarse - width.width_m) / 15
+    steps = steps_u(x, y, s, width)
+    if steps is None:
+        steps = width.width_m / 15
     u = np.sqrt(width.standard_uncertainty_m**2 + 2 * scatter_m**2 + steps**2)
     return replace(width, standard_uncertainty_m=float(u))
 

@@ -52,7 +52,7 @@ def test_the_same_findings_and_sizes_in_another_order(order: Callable[[Observati
     assert set(first) == set(second) == {"pivot.offset", "angle.zero", "null.source"}
     for code, sizes in first.items():
         for (name, a, ua), (_, b, ub) in zip(sizes, second[code], strict=True):
-            assert abs(a - b) <= 2.5 * np.hypot(ua, ub), f"{code} {name}: {a} and {b}"
+            assert abs(a - b) <= 2 * np.hypot(ua, ub), f"{code} {name}: {a} and {b}"
 
 
 @pytest.mark.parametrize(("x_mm", "z_mm"), [(0.8, 0.8), (-0.8, 0.8), (0.6, -1.0)])

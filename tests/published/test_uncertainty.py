@@ -15,6 +15,7 @@ from hypothesis import strategies as st
 from numpy.typing import NDArray
 
 from checks.errors import MeasurementError
+from checks.repeatability import from_repeats
 from checks.uncertainty import Budget, Contribution, Distribution, Input, budget_of, drawn, e_n
 
 
@@ -126,7 +127,7 @@ def test_repeats_give_their_mean_and_its_scatter() -> None:
         96.90, 98.18, 98.25, 98.61, 99.03, 99.49, 99.56, 99.74, 99.89, 100.07,
         100.33, 100.42, 100.68, 100.95, 101.11, 101.20, 101.57, 101.84, 102.36, 102.72,
     ]  # fmt: skip
-    found = Input.repeated(readings)
+    found = from_repeats(np.array(readings)).as_input()
     assert found.value == pytest.approx(100.145, abs=5e-4)
     assert found.u == pytest.approx(0.333, abs=5e-4)
     assert found.freedom == 19
@@ -139,7 +140,7 @@ def test_repeats_give_their_mean_and_its_scatter() -> None:
         lambda: Input(float("nan"), 1.0),
         lambda: Input(0.0, 1.0, "t"),
         lambda: Input.within(0.0, 1.0, "normal"),
-        lambda: Input.repeated([1.0]),
+        lambda: from_repeats(np.array([1.0])),
     ],
 )
 def test_what_cannot_be_an_input_is_refused(make: object) -> None:
