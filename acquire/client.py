@@ -124,9 +124,8 @@ class Client:
         Raises:
             DaemonSilent: the daemon is gone.
         """
-        status = self.status()
         if self._next is None:
-            self._next = status.last_event + 1
+            self._next = self.status().last_event + 1
         yield from self._missed()
         while True:
             if not self._events.poll(LOOK_MS):

@@ -32,6 +32,7 @@ from acquire.prepare import Job, circumstances_of, first_settings, plan_of, reso
 from acquire.record import PointRecord
 from acquire.recorder import Recorder
 from acquire.source_switch import SourceSwitch
+from acquire.taken import record_of
 from acquire.travel import check_way
 from drivers.autorange import autorange
 from drivers.bench import BenchInstruments
@@ -165,8 +166,11 @@ class Conductor:
         first = plan.points[0]
         if self._job.scan.capture.full_scale_v is None and first.pose != plan.reference:
             first = PlanPoint(-1, plan.reference, reference=True, plane=0)  # where the signal is strongest
-        check_way(self._mover.stand().element, first.pose, self._pivot, self._job.bench)
+        self._check_way_to(first)
         self._there = (first, self._mover.arrive(first.pose, self._control.stop_asked))
+
+    def _check_way_to(self, point: PlanPoint) -> None:
+        check_way(self._mover.stand().element, point.pose, self._pivot, self._job.bench)
 
     def _choose_range(self, wanted: CaptureSettings) -> CaptureSettings:
         """The range of the scan, or the one that the first point asks for."""
@@ -192,7 +196,7 @@ class Conductor:
         self._state("running")
         try:
             if points and not self._stands_at(points[0]):
-                check_way(self._mover.stand().element, points[0].pose, self._pivot, self._job.bench)
+                self._check_way_to(points[0])
             for at, point in enumerate(points):
                 self._between(recorder)
                 following = points[at + 1] if at + 1 < len(points) else None
@@ -246,32 +250,8 @@ class Conductor:
             self._look_after_temperature(first=point.index == 0)
         trace = scope.read_samples()
         self._samples_due = False
-        return self._record(point, before, after, captured - self._began, trace), trace
-
-    def _record(self, point: PlanPoint, before: Where, after: Where, time_s: float, trace: Trace) -> PointRecord:
-        s = trace.scaling
-        return PointRecord(
-            index=point.index,
-            plan_index=point.index,
-            reference=point.reference,
-            plane=point.plane,
-            commanded=point.pose,
-            before=before.element,
-            after=after.element,
-            carriage_commanded=self._pivot.carriage_for(point.pose),
-            carriage_before=before.carriage,
-            carriage_after=after.carriage,
-            time_s=time_s,
-            temperature_c=self._temperature_c,
-            volts_per_count=s.volts_per_count,
-            volts_at_zero=s.volts_at_zero,
-            interval_s=s.interval_s,
-            start_s=s.start_s,
-            lowest=trace.lowest,
-            highest=trace.highest,
-            averages=trace.averages,
-            full_scale_v=trace.full_scale_v,
-        )
+        time_s = captured - self._began
+        return record_of(point, self._pivot, before, after, time_s, self._temperature_c, trace), trace
 
     def _stands_at(self, point: PlanPoint) -> bool:
         return self._there is not None and self._there[0] is point

@@ -59,7 +59,8 @@ def held_instruments(addresses: Iterable[str], folder: Path, owner: str) -> Iter
     """
     with ExitStack() as stack:
         for address in addresses:
-            one = os.path.realpath(address) if address.startswith("/") else address
+            device = address.removeprefix("serial://")
+            one = os.path.realpath(device) if device.startswith("/") else address  # a link is the same line
             name = f"instrument-{sha256(one.encode()).hexdigest()[:16]}.lock"
             stack.enter_context(held(folder / name, f"the instrument at {address}", owner))
         yield

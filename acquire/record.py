@@ -2,7 +2,11 @@
 
 from __future__ import annotations
 
+from typing import Any
+
 import msgspec
+import numpy as np
+from numpy.typing import NDArray
 
 Five = tuple[float, float, float, float, float]
 
@@ -34,3 +38,8 @@ class PointRecord(msgspec.Struct, frozen=True, array_like=True):
     highest: int
     averages: int
     full_scale_v: float
+
+
+def volts_of(record: PointRecord, counts: NDArray[Any], offset_v: float) -> NDArray[np.float64]:
+    """Counts of a stored point as volts without the offset, shape as given."""
+    return np.asarray(counts * record.volts_per_count + record.volts_at_zero - offset_v, np.float64)

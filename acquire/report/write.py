@@ -9,6 +9,7 @@ from typing import Any
 
 import numpy as np
 
+from acquire.record import volts_of
 from acquire.report import figures
 from acquire.report.page import Picture, findings, page, picture, section, table
 from acquire.results import pressure, raster, rotation
@@ -140,7 +141,7 @@ def _reference(stored: StoredScan, seen: Sequence[Observation], usable_hz: Any) 
     strongest = max(seen, key=lambda o: o.square_integral_v2s)
     chosen = next((o for o in seen if o.reference), strongest)
     record, c = stored.records[chosen.index], stored.circumstances
-    volts = stored.counts(chosen.index) * record.volts_per_count + record.volts_at_zero - chosen.offset_v
+    volts = volts_of(record, stored.counts(chosen.index), chosen.offset_v)
     time = record.start_s + np.arange(volts.size, dtype=np.float64) * record.interval_s
     spectrum = np.abs(np.fft.rfft(volts * np.hanning(volts.size)))
     frequency = np.fft.rfftfreq(volts.size, record.interval_s)

@@ -9,6 +9,7 @@ from math import isfinite, sqrt
 import numpy as np
 from numpy.typing import NDArray
 
+from acquire.record import volts_of
 from acquire.results.quantity import Quantity
 from acquire.store import StoredScan
 from checks.deconvolution import LowPass, Pressure, clear_up_to, deconvolve, monte_carlo
@@ -88,8 +89,7 @@ def heard_by(stored: StoredScan, seen: Sequence[Observation]) -> Heard:
     gate = stored.circumstances.gate
     waves = []
     for o in chosen:
-        record = stored.records[o.index]
-        volts = stored.counts(o.index) * record.volts_per_count + record.volts_at_zero - o.offset_v
+        volts = volts_of(stored.records[o.index], stored.counts(o.index), o.offset_v)
         waves.append(volts[gate.start : gate.stop])
     noise = float(np.mean([o.noise_rms_v for o in chosen])) / sqrt(len(chosen))
     warmth = float(np.mean([o.temperature_c for o in chosen]))

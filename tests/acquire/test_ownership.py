@@ -56,3 +56,15 @@ def test_an_instrument_has_one_owner_whatever_else_the_benches_hold(tmp_path: Pa
         held_instruments(["/dev/../dev/null"], tmp_path, "the daemon at C"),
     ):
         pytest.fail("two owners")
+
+
+def test_a_serial_line_is_the_same_under_another_name(tmp_path: Path) -> None:
+    line, link = tmp_path / "line", tmp_path / "link"
+    line.touch()
+    link.symlink_to(line)
+    with (
+        held_instruments([f"serial://{line}"], tmp_path, "the daemon at A"),
+        pytest.raises(OwnedByAnother, match="belongs to the daemon at A"),
+        held_instruments([f"serial://{link}"], tmp_path, "the daemon at B"),
+    ):
+        pytest.fail("two owners")

@@ -9,11 +9,13 @@ from functools import cached_property
 from threadpoolctl import threadpool_limits
 
 from acquire.judge import Judge
-from acquire.plan import AXIS_NUMBER, Plan, PlanPoint
+from acquire.mover import Where
+from acquire.plan import AXIS_NUMBER, Plan
 from acquire.prepare import circumstances_of, first_settings, plan_of
 from acquire.record import Five, PointRecord
 from acquire.results.quantity import Quantity
 from acquire.results.rotation import quantities, rotation_results
+from acquire.taken import record_of
 from acquire.travel import approach_from, plays_of
 from checks.finding import Change
 from checks.observation import Circumstances, Observation
@@ -104,11 +106,12 @@ class Hand:
                 self._motion.go_each(wanted, self._motion.limits)
                 self._time.run_due()
 
-    def reported(self) -> Five:
+    def reported(self) -> Where:
         """Read back."""
         told = self._motion.reported()
         x, y, z, theta, phi = (told.get(a, 0.0) for a in AXES)
-        return (x, y, z, theta, phi)
+        carriage = (x, y, z, theta, phi)
+        return Where(carriage, self._bench.job.pivot.element_at(carriage))
 
     def wait(self, seconds: float) -> None:
         """Let time pass."""
@@ -171,32 +174,5 @@ def _points(hand: Hand, bench: Drawn, plan: Plan, settings: CaptureSettings) -> 
         before = hand.reported()
         time_s = hand.now_s() - began
         trace = hand.capture(settings)
-        yield _record(bench, point, before, hand.reported(), time_s, hand.temperature_c(), trace), trace
-
-
-def _record(
-    bench: Drawn, point: PlanPoint, before: Five, after: Five, time_s: float, warmth: float, trace: Trace
-) -> PointRecord:
-    pivot, scaling = bench.job.pivot, trace.scaling
-    return PointRecord(
-        index=point.index,
-        plan_index=point.index,
-        reference=point.reference,
-        plane=point.plane,
-        commanded=point.pose,
-        before=pivot.element_at(before),
-        after=pivot.element_at(after),
-        carriage_commanded=pivot.carriage_for(point.pose),
-        carriage_before=before,
-        carriage_after=after,
-        time_s=time_s,
-        temperature_c=warmth,
-        volts_per_count=scaling.volts_per_count,
-        volts_at_zero=scaling.volts_at_zero,
-        interval_s=scaling.interval_s,
-        start_s=scaling.start_s,
-        lowest=trace.lowest,
-        highest=trace.highest,
-        averages=trace.averages,
-        full_scale_v=trace.full_scale_v,
-    )
+        after = hand.reported()
+        yield record_of(point, bench.job.pivot, before, after, time_s, hand.temperature_c(), trace), trace
