@@ -78,11 +78,9 @@ class VisaLink(Link):
         try:
             resource.timeout = max(1.0, timeout_s * 1e3)
             data: bytes = resource.read_raw(LONGEST_READ)
-        except pyvisa.VisaIOError as error:
-            if error.error_code == pyvisa.constants.StatusCode.error_timeout:
+        except (pyvisa.VisaIOError, OSError) as error:
+            if _is_timeout(error):
                 return b""
-            raise self._lost(f"receiving failed ({error})") from error
-        except OSError as error:
             raise self._lost(f"receiving failed ({error})") from error
         return data
 
@@ -102,11 +100,9 @@ class VisaLink(Link):
                 length = self._inbox.block_length()
             body = bytearray(resource.read_bytes(length, chunk_size=max(length, 1)))
             self._end_of_block(resource)
-        except pyvisa.VisaIOError as error:
-            if error.error_code == pyvisa.constants.StatusCode.error_timeout:
-                raise self._late() from error
-            raise self._lost(f"a block did not come whole ({error})") from error
         except (pyvisa.Error, OSError) as error:
+            if _is_timeout(error):
+                raise self._late() from error
             raise self._lost(f"a block did not come whole ({error})") from error
         except ProtocolError:
             self._out_of_step = True
@@ -123,3 +119,10 @@ class VisaLink(Link):
             end = bytes(resource.read_bytes(1))
         if end != b"\n":
             raise ProtocolError(f"a block ends with {end!r} instead of an end of line: it is longer than it says")
+
+
+def _is_timeout(error: Exception) -> bool:
+    """Whether nothing came in time, and nothing worse."""
+    import pyvisa
+
+    return isinstance(error, pyvisa.VisaIOError) and error.error_code == pyvisa.constants.StatusCode.error_timeout

@@ -59,7 +59,6 @@ class ScpiInstrument:
 
     def __init__(self, identity: str, catch_up: Callable[[], object] = lambda: None) -> None:
         self.status = Status()
-        self.panel_free = False
         self.catch_up = catch_up
         self.output: Sequence[object] = ()
         self._completion_wanted = False
@@ -137,7 +136,7 @@ class ScpiInstrument:
             Command("SYSTem:ERRor[:NEXT]?", status.next_error),
             Command("SYSTem:ERRor:COUNt?", lambda: b"%d" % status.error_count()),
             # common practice of instruments on a serial line or socket, no source
-            Command("SYSTem:LOCal", partial(setattr, self, "panel_free", True)),
+            Command("SYSTem:LOCal", lambda: None),
             Command("SYSTem:VERSion?", lambda: b"1999.0"),
         ]
 
