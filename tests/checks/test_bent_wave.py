@@ -6,12 +6,12 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
-from numpy.typing import NDArray
 from scipy.special import jv
 
 from checks.bent_wave import Wave, face_delay, heard, plain, swing, wave_of
 from checks.element import EDGES, Edge, jinc, obliquity, obliquity_slope
 from tests.checks.synthetic import SPEED, Truth, rotation
+from tests.fields import piston_pressure
 
 THETA = np.radians(np.linspace(-50, 50, 21))
 NOWHERE = np.zeros(21)
@@ -28,27 +28,13 @@ def test_of_a_plane_wave_a_disc_hears_the_textbook_pattern(edge: Edge, radius: f
     assert heard(THETA, NOWHERE, FLAT, sizes, edge) == pytest.approx(plain(THETA, FLAT, sizes, edge), abs=1e-9)
 
 
-def piston(r: NDArray[np.float64], z: NDArray[np.float64], radius: float, frequency: float) -> NDArray[np.complex128]:
-    """p of a plane circular source at points (r, z), by adding up the Rayleigh integral on a grid of its own."""
-    k = 2 * np.pi * frequency / SPEED
-    q, w = np.polynomial.legendre.leggauss(120)
-    q, w = radius * (q + 1) / 2, w * radius / 2
-    phi = (np.arange(240) + 0.5) * 2 * np.pi / 240
-    x, y = np.outer(q, np.cos(phi)), np.outer(q, np.sin(phi))
-    weight = np.outer(w * q, np.full(phi.size, 2 * np.pi / 240))
-    values = []
-    for at, along in zip(r, z, strict=True):
-        d = np.sqrt((x - at) ** 2 + y**2 + along**2)
-        values.append(np.sum(weight * np.exp(-1j * k * d) / d))
-    return np.array(values)
-
-
 @pytest.mark.parametrize("distance", [0.045, 0.08, 0.16])
 def test_the_wave_is_that_of_the_rayleigh_integral_to_second_order(distance: float) -> None:
     c = replace(C, distance_m=distance)  # a²/lambda is 55 mm
     wave = wave_of(c, SPEED)
     k, h = float(wave.wavenumber[0]), 2e-4
-    p = piston(np.array([0, h, 0, 0]), distance + np.array([0, 0, h, -h]), c.source_radius_m, c.drive_hz)
+    places = np.array([0, h, 0, 0]), distance + np.array([0, 0, h, -h])
+    p = piston_pressure(*places, c.source_radius_m, c.drive_hz, SPEED)
     beside = np.log(p[1] / p[0])
     assert -beside.real / h**2 == pytest.approx(wave.taper[0], rel=0.03)
     assert -2 * beside.imag / (k * h**2) == pytest.approx(wave.bend, rel=0.03, abs=0.3)

@@ -6,6 +6,7 @@ benches drawn at random, in `tests/faults`.
 
 from dataclasses import dataclass
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 import pytest
@@ -17,6 +18,7 @@ from acquire.results.summary import quantities_of
 from acquire.store import open_stored
 from profiles.load import find, read
 from tests.end_to_end.running import SHORT_CAPTURE, request, running, wait_for_end
+from tests.fields import piston_pressure
 
 SEEDS = 2
 FAR = 4.0  # standard uncertainties
@@ -39,18 +41,33 @@ BENCHES = {
 }
 
 
-def bench_file(truth: Truth, path: Path) -> Path:
-    """The demonstration's bench with another truth."""
-    tables = read(find("bench", "demo-tank"))
-    tables["simulation"]["element"] |= {
+def put_into(simulation: dict[str, Any], truth: Truth) -> None:
+    """The truth, in the table that the simulator reads."""
+    simulation["element"] |= {
         "radius_mm": truth.radius_mm,
         "edge": truth.edge,
         "sensitivity_nv_per_pa": 50 if truth.radius_mm < 0.3 else 200,
     }
-    tables["simulation"]["mechanics"] |= {
+    simulation["mechanics"] |= {
         "pivot_offset_mm": [truth.offset_mm[0], 0.0, truth.offset_mm[1]],
         "angle_zero_deg": truth.zero_deg,
     }
+
+
+def scan_of(truth: Truth) -> dict[str, Any]:
+    """What of the demonstration's fast scan is another."""
+    return {
+        "sensor": truth.sensor,
+        "highest_mhz": 27.0,
+        "rotation": {"span_deg": 80.0, "step_deg": 2.0},
+        "capture": SHORT_CAPTURE | {"averages": 16},
+    }
+
+
+def bench_file(truth: Truth, path: Path) -> Path:
+    """The demonstration's bench with another truth."""
+    tables = read(find("bench", "demo-tank"))
+    put_into(tables["simulation"], truth)
     path.write_text(tomli_w.dumps(tables))
     return path
 
@@ -65,20 +82,10 @@ def one(quantities: list[Quantity], name: str, **conditions: str) -> Quantity:
 def test_rotations_find_the_truth_within_what_they_state(name: str, tmp_path: Path) -> None:
     truth = BENCHES[name]
     bench = bench_file(truth, tmp_path / "bench.toml")
-    rotation = {"span_deg": 80.0, "step_deg": 2.0}
     for seed in range(SEEDS):
         store = tmp_path / f"{seed}.zarr"
         with running(tmp_path / f"run-{seed}", str(bench), seed=seed) as on, Client(on.endpoint) as client:
-            client.ask(
-                request(
-                    "demo-rotation-fast",
-                    store,
-                    sensor=truth.sensor,
-                    highest_mhz=27.0,
-                    rotation=rotation,
-                    capture=SHORT_CAPTURE | {"averages": 16},
-                )
-            )
+            client.ask(request("demo-rotation-fast", store, **scan_of(truth)))
             assert wait_for_end(client).state == "sealed"
         found = quantities_of(open_stored(store))
         radius = one(found, "mean effective radius")
@@ -97,21 +104,6 @@ def test_rotations_find_the_truth_within_what_they_state(name: str, tmp_path: Pa
             error = quantity.value - true
             assert abs(error) <= allowed, f"seed {seed}: {key} off by {error:.3g}, allowed {allowed:.3g}"
             assert abs(error) <= FAR * quantity.standard_uncertainty, f"seed {seed}: {key}"
-
-
-def piston_amplitude(x: np.ndarray, z: float, radius: float, frequency: float, speed: float) -> np.ndarray:
-    """|p| of a plane circular source off its axis, by adding up the Rayleigh integral on a grid of its own."""
-    k = 2 * np.pi * frequency / speed
-    r, wr = np.polynomial.legendre.leggauss(160)
-    r, wr = radius * (r + 1) / 2, wr * radius / 2
-    phi = (np.arange(360) + 0.5) * 2 * np.pi / 360
-    sx, sy = np.outer(r, np.cos(phi)), np.outer(r, np.sin(phi))
-    weight = np.outer(wr * r, np.full(phi.size, 2 * np.pi / 360))
-    values = []
-    for at in x:
-        d = np.sqrt((sx - at) ** 2 + sy**2 + z**2)
-        values.append(abs(np.sum(weight * np.exp(-1j * k * d) / d)))
-    return np.array(values)
 
 
 def bowl_amplitude(x: np.ndarray, z: float, radius: float, focus: float, frequency: float, speed: float) -> np.ndarray:
@@ -180,7 +172,8 @@ def test_rasters_find_width_and_peak_of_a_field_computed_apart(kind: str, tmp_pa
     if focus:
         expected = width6(x, bowl_amplitude(x, z * 1e-3, radius * 1e-3, focus * 1e-3, frequency * 1e6, c))
     else:
-        expected = width6(x, piston_amplitude(x, z * 1e-3, radius * 1e-3, frequency * 1e6, c))
+        there = piston_pressure(x, np.full(x.size, z * 1e-3), radius * 1e-3, frequency * 1e6, c)
+        expected = width6(x, np.abs(there))
     for axis in ("x", "y"):
         width = one(found, "beamwidth", axis=axis)
         assert width.value == pytest.approx(expected, rel=0.02)

@@ -10,8 +10,7 @@ from acquire.prepare import Job
 from profiles.load import find, load_bench, load_scan, load_sensor, load_source
 from profiles.scan import Scan
 from sim_hardware.truth import Truth, read_truth
-from tests.end_to_end.running import SHORT_CAPTURE
-from tests.end_to_end.test_truth import BENCHES
+from tests.end_to_end.test_truth import BENCHES, put_into, scan_of
 from tests.faults.drawn import Drawn
 from tests.faults.in_hand import scanned
 
@@ -22,21 +21,8 @@ SEEDS = 40
 def bench_of(name: str, seed: int) -> Drawn:
     wanted = BENCHES[name]
     truth = read_truth(find("bench", "demo-tank")).model_dump() | {"seed": seed}
-    truth["element"] |= {
-        "radius_mm": wanted.radius_mm,
-        "edge": wanted.edge,
-        "sensitivity_nv_per_pa": 50 if wanted.radius_mm < 0.3 else 200,
-    }
-    truth["mechanics"] |= {
-        "pivot_offset_mm": [wanted.offset_mm[0], 0.0, wanted.offset_mm[1]],
-        "angle_zero_deg": wanted.zero_deg,
-    }
-    scan = load_scan("demo-rotation-fast").model_dump(mode="json") | {
-        "sensor": wanted.sensor,
-        "highest_mhz": 27.0,
-        "rotation": {"span_deg": 80.0, "step_deg": 2.0},
-        "capture": SHORT_CAPTURE | {"averages": 16},
-    }
+    put_into(truth, wanted)
+    scan = load_scan("demo-rotation-fast").model_dump(mode="json") | scan_of(wanted)
     job = Job(load_bench("demo-tank"), load_sensor(wanted.sensor), load_source("plane-2p25"), Scan.model_validate(scan))
     return Drawn(seed, job, Truth.model_validate(truth), seed)
 
